@@ -1,0 +1,162 @@
+"""Constraint files: read, validated completely, and turned into `DataSet`s.
+
+A constraint file is ECSV (astropy's Enhanced CSV) with the measurements of one quantity: numbers
+with their units in the columns, conventions in ``meta``. `fogline.quantities.file_specs` says
+what each quantity's file must hold. Everything wrong with a file is found at once and reported
+with its line; what passes is trusted from here on.
+"""
+
+from __future__ import annotations
+
+import os
+import re
+from collections.abc import Iterable
+from pathlib import Path
+from typing import Any, Final
+
+from fogline.cosmology import Cosmology
+from fogline.datasets import DataSet
+from fogline.ecsv_lines import RawTable, read_table, split_ecsv
+from fogline.faults import Fault, InputError
+from fogline.file_meta import check_meta, find_spec
+from fogline.file_rows import Rows, are_counts, check_columns, check_rows
+from fogline.file_units import check_units
+from fogline.quantities.spec import FileSpec, ValueColumn
+from fogline.yaml_lines import read_text
+
+_STEM: Final = re.compile(r"[A-Za-z0-9_-]+")
+
+PathLike = str | os.PathLike[str]
+
+
+def read_constraint_file(path: PathLike) -> DataSet:
+    """Return the data set that one constraint file holds.
+
+    Parameters
+    ----------
+    path : path-like
+        An ECSV file.
+
+    Returns
+    -------
+    DataSet
+        In the file's own units and convention.
+
+    Raises
+    ------
+    InputError
+        With every fault of the file.
+    """
+    path = os.fspath(path)
+    faults: list[Fault] = []
+    try:
+        text = read_text(path)
+    except InputError as error:
+        raise InputError([*error.faults, *_stem_faults(path)]) from None
+    faults.extend(_stem_faults(path))
+    raw = split_ecsv(path, text, faults)
+    dataset = None if raw is None else _validate(raw, faults)
+    if faults or dataset is None:
+        raise InputError(faults)
+    return dataset
+
+
+def read_constraint_files(paths: Iterable[PathLike]) -> list[DataSet]:
+    """Return the data sets of several files, which together make one analysis.
+
+    Parameters
+    ----------
+    paths : iterable of path-like
+        ECSV files.
+
+    Returns
+    -------
+    list of DataSet
+        In the order of `paths`.
+
+    Raises
+    ------
+    InputError
+        With every fault of all files, and where two of them have the same stem.
+    """
+    paths = [os.fspath(path) for path in paths]
+    datasets: list[DataSet] = []
+    faults = duplicate_stems(paths)
+    for path in paths:
+        try:
+            datasets.append(read_constraint_file(path))
+        except InputError as error:
+            faults.extend(error.faults)
+    if faults:
+        raise InputError(faults)
+    return datasets
+
+
+def duplicate_stems(paths: Iterable[str]) -> list[Fault]:
+    """Return a fault for each file whose stem another file before it has.
+
+    Parameters
+    ----------
+    paths : iterable of str
+        Files of one analysis.
+
+    Returns
+    -------
+    list of Fault
+    """
+    seen: dict[str, str] = {}
+    faults = []
+    for path in paths:
+        stem = Path(path).stem
+        if stem in seen:
+            what = f"has the same name '{stem}' as {seen[stem]}; data sets need names of their own"
+            faults.append(Fault(path, 1, what))
+        seen.setdefault(stem, path)
+    return faults
+
+
+def _stem_faults(path: str) -> list[Fault]:
+    stem = Path(path).stem
+    if _STEM.fullmatch(stem):
+        return []
+    what = f"file is named '{stem}', must be letters, digits, '_' and '-' (it names outputs)"
+    return [Fault(path, 1, what)]
+
+
+def _validate(raw: RawTable, faults: list[Fault]) -> DataSet | None:
+    spec = find_spec(raw, faults)
+    if spec is None:
+        return None
+    counts = spec.counts and are_counts(raw)
+    meta = check_meta(raw, spec, counts, faults)
+    if not raw.columns or not check_columns(raw, spec, faults):
+        return None
+    value = _value_column(spec, meta)
+    unit = check_units(raw, value, faults)
+    table = read_table(raw, faults)
+    if table is None:
+        return None
+    arrays = check_rows(Rows(raw, table, faults), spec, value, counts, meta)
+    if faults:
+        return None
+    return DataSet(
+        name=Path(raw.path).stem,
+        path=raw.path,
+        quantity=spec.quantity,
+        meta=meta,
+        unit=unit,
+        counts=counts,
+        cosmology=_cosmology(raw.meta.get("cosmology")),
+        **arrays,
+    )
+
+
+def _value_column(spec: FileSpec, meta: dict[str, Any]) -> ValueColumn | None:
+    return spec.values.get(str(meta.get(spec.form_key, "")) if spec.form_key else "")
+
+
+def _cosmology(block: dict[str, Any] | None) -> Cosmology | None:
+    if block is None:
+        return None
+    dark = block.get("Ode0")
+    return Cosmology(float(block["H0"]), float(block["Om0"]), None if dark is None else float(dark))

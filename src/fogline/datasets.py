@@ -1,0 +1,135 @@
+"""`DataSet`: one validated constraint file as arrays, in the file's own convention."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from fogline.cosmology import Cosmology
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class DataSet:
+    """Measurements of one quantity from one file; the numbers are those of the file.
+
+    Parameters
+    ----------
+    name : str
+        The file's stem; names the data set everywhere.
+    path : str
+        The file, as the user named it.
+    quantity : str
+        Registry name of what is measured.
+    meta : mapping
+        The file's meta with defaults filled in (without ``cosmology``).
+    unit : str
+        Unit of `observed` as an astropy string; empty where dimensionless.
+    z_lo, z_hi : ndarray, shape (n_rows,)
+        Redshift bin; equal where the row is at a single redshift.
+    observed : ndarray, shape (n_rows,) [unit]
+        Value, limit or count.
+    err_lo, err_hi : ndarray, shape (n_rows,) [unit]
+        One-sigma errors of each side; NaN for counts and where a limit states none.
+    limit : ndarray of int, shape (n_rows,)
+        +1 for an upper limit, -1 for a lower limit, 0 for a measurement or count.
+    counts : bool
+        Whether `observed` are counts over `search_path`.
+    search_path : ndarray, shape (n_rows,)
+        Redshift or absorption path searched; NaN where the rows are not counts.
+    log_nhi_lo, log_nhi_hi : ndarray, shape (n_rows,) [dex of cm^-2]
+        Column bins of the rows; NaN where the quantity has none.
+    labels : tuple of str
+        Row labels; empty strings where the file gives none.
+    lines : tuple of int
+        Line of each row in the file, for messages.
+    cosmology : Cosmology or None
+        The cosmology that the file states.
+    """
+
+    name: str
+    path: str
+    quantity: str
+    meta: Mapping[str, Any]
+    unit: str
+    z_lo: Array
+    z_hi: Array
+    observed: Array
+    err_lo: Array
+    err_hi: Array
+    limit: NDArray[np.int64]
+    counts: bool
+    search_path: Array
+    log_nhi_lo: Array
+    log_nhi_hi: Array
+    labels: tuple[str, ...]
+    lines: tuple[int, ...]
+    cosmology: Cosmology | None
+
+    @property
+    def n_rows(self) -> int:
+        """Number of rows."""
+        return len(self.observed)
+
+    @property
+    def z(self) -> Array:
+        """Middle of each row's redshift bin, shape (n_rows,)."""
+        return 0.5 * (self.z_lo + self.z_hi)
+
+    @property
+    def source(self) -> str:
+        """Where the numbers come from, as the file says."""
+        return str(self.meta["source"])
+
+    @property
+    def confidence(self) -> float:
+        """Confidence of the limits, between 0.5 and 1."""
+        return float(self.meta["confidence"])
+
+
+def hypothetical(quantity: str, z: ArrayLike, *, unit: str = "", **meta: Any) -> DataSet:
+    """Return rows of a quantity that nobody measured, to predict a derived curve.
+
+    Parameters
+    ----------
+    quantity : str
+        Registry name.
+    z : array_like, shape (n_rows,)
+        Redshifts.
+    unit : str
+        Unit of the prediction.
+    **meta
+        Meta keys of the quantity.
+
+    Returns
+    -------
+    DataSet
+        Without observed values or cosmology: predictions are in the cosmology of the results.
+    """
+    z = np.array(z, dtype=float)
+    silent = np.full(len(z), np.nan)
+    return DataSet(
+        name="hypothetical",
+        path="",
+        quantity=quantity,
+        meta={"source": "", "confidence": 0.95, **meta},
+        unit=unit,
+        z_lo=z,
+        z_hi=z,
+        observed=silent,
+        err_lo=silent,
+        err_hi=silent,
+        limit=np.zeros(len(z), dtype=np.int64),
+        counts=False,
+        search_path=silent,
+        log_nhi_lo=silent,
+        log_nhi_hi=silent,
+        labels=("",) * len(z),
+        lines=(0,) * len(z),
+        cosmology=None,
+    )

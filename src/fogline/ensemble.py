@@ -1,0 +1,315 @@
+"""One ensemble from its seed to its result: warm-up, frozen mixture, counted samples.
+
+The first warm-up round knows only stretch moves. After each round a Student-t mixture is fitted
+to the round's later half, and the next one mixes independence proposals from it with stretch
+moves. After the last the mixture is frozen and samples count. The run is a row of blocks; at the
+end of each the state in `fogline.checkpoint.RunState` is all that the rest depends on, so a run
+that is killed and resumed gives the same result bit for bit.
+"""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable
+from pathlib import Path
+from typing import Final
+
+import emcee
+import numpy as np
+from emcee.state import State
+from numpy.typing import NDArray
+from threadpoolctl import threadpool_limits
+
+from fogline.chains import EnsembleResult
+from fogline.checkpoint import RunState, load_checkpoint, save_checkpoint
+from fogline.evidence import importance_sample
+from fogline.mixture import StudentMixture, fit_student_mixture
+from fogline.moves import CountedStretchMove, IndependenceMove, Tally
+from fogline.progress import Progress, Silent
+from fogline.settings import SamplerSettings
+from fogline.stopping import ending, look, status, worth_a_look
+
+__all__ = ["EnsembleResult", "run_ensemble"]
+
+Array = NDArray[np.float64]
+LogProb = Callable[[Array], Array]
+
+BLOCK: Final = 20
+"""Stored draws between two looks at the chain."""
+
+MAX_CHAIN_BYTES: Final = 16e6
+"""A chain that would outgrow this is thinned by two."""
+
+FIT_SAMPLES: Final = 16_000
+"""Samples that a mixture is fitted to."""
+
+CHECKPOINT_SECONDS: Final = 1.0
+"""Least time between two checkpoints; which blocks leave one does not change the result."""
+
+START_ROUNDS: Final = 100
+"""Draws from the prior for a walker to find a finite posterior."""
+
+
+def run_ensemble(
+    log_prob: LogProb,
+    n_dim: int,
+    settings: SamplerSettings,
+    index: int,
+    checkpoint: Path | None = None,
+    fingerprint: str = "",
+    progress: Progress | None = None,
+) -> EnsembleResult:
+    """Sample a posterior whose prior is a unit normal in every direction.
+
+    Parameters
+    ----------
+    log_prob : callable
+        ``(n, n_dim) -> (n,)``: ln of normalised prior times likelihood; -inf allowed.
+    n_dim : int
+        Number of parameters.
+    settings : SamplerSettings
+        Walkers, rounds, targets.
+    index : int
+        Which ensemble of the analysis; each has a random stream of its own.
+    checkpoint : Path, optional
+        File to resume from and to keep; none by default.
+    fingerprint : str, optional
+        Of data, model and settings: a checkpoint with another one is left aside.
+    progress : Progress, optional
+        Told how the run goes; nobody by default.
+
+    Returns
+    -------
+    EnsembleResult
+
+    Raises
+    ------
+    ValueError
+        If `log_prob` gives NaN, if no walker finds a finite start, or if there are fewer than
+        two walkers a dimension.
+    """
+    # One BLAS thread: products are then rounded alike in every run, and ensembles do not compete.
+    with threadpool_limits(1, user_api="blas"):
+        run = _Run(_guarded(log_prob), n_dim, settings, index, progress or Silent())
+        return run.to_end(_Keeper(checkpoint, f"{fingerprint}/{index}"))
+
+
+def _guarded(log_prob: LogProb) -> LogProb:
+    """Return `log_prob` that raises on NaN, with the parameters that gave it."""
+
+    def guarded(x: Array) -> Array:
+        value = np.asarray(log_prob(x), dtype=np.float64)
+        if np.isnan(value).any():
+            bad = x[np.isnan(value)][0]
+            raise ValueError(f"the posterior is NaN at x = {bad.tolist()}")
+        return value
+
+    return guarded
+
+
+class _Keeper:
+    """Where a run leaves its checkpoints, and how often."""
+
+    def __init__(self, path: Path | None, fingerprint: str) -> None:
+        self.path = path
+        self.fingerprint = fingerprint
+        self._saved = time.monotonic()
+
+    def load(self) -> tuple[RunState | None, str]:
+        """Return the state to resume from, if any, and why a file was left aside."""
+        return load_checkpoint(self.path, self.fingerprint) if self.path else (None, "")
+
+    def save(self, state: RunState) -> None:
+        """Write a checkpoint unless the last one is fresh."""
+        if self.path and time.monotonic() - self._saved > CHECKPOINT_SECONDS:
+            save_checkpoint(self.path, state, self.fingerprint)
+            self._saved = time.monotonic()
+
+
+class _Run:
+    """One run: its fixed inputs, and the methods that move a `RunState` on."""
+
+    def __init__(
+        self,
+        log_prob: LogProb,
+        n_dim: int,
+        settings: SamplerSettings,
+        index: int,
+        progress: Progress,
+    ) -> None:
+        if settings.walkers < 2 * n_dim:
+            raise ValueError(f"{n_dim} parameters need {2 * n_dim} walkers or more")
+        self.log_prob = log_prob
+        self.n_dim = n_dim
+        self.settings = settings
+        self.index = index
+        self.progress = progress
+        self.rounds = tuple(zip(settings.warm_up, settings.components, strict=True))
+        streams = np.random.SeedSequence(settings.seed).spawn(max(settings.ensembles, index + 1))
+        # Streams: the start, emcee's RandomState, the importance draws, one for each fit. None
+        # is used twice, so that none has to be in a checkpoint but emcee's.
+        self.streams = streams[index].spawn(3 + len(self.rounds))
+
+    def to_end(self, keeper: _Keeper) -> EnsembleResult:
+        """Run from the start, or from a checkpoint, to the result."""
+        state, message = keeper.load()
+        if message:
+            self.progress.note(message)
+        if state is None:
+            state = self.start()
+        else:
+            self.progress.note(f"resumed from a checkpoint, {self.stage(state)} step {state.step}")
+        self.warm_up(state, keeper)
+        self.count(state, keeper)
+        self.progress.close()
+        return self.result(state)
+
+    def stage(self, state: RunState) -> str:
+        """Return the name of the round."""
+        if state.round == len(self.rounds):
+            return "sampling"
+        return f"warm-up {state.round + 1}/{len(self.rounds)}"
+
+    def start(self) -> RunState:
+        """Return walkers drawn from the prior, wider than any posterior."""
+        rng = np.random.default_rng(self.streams[0])
+        coords = rng.standard_normal((self.settings.walkers, self.n_dim))
+        ln_prob = self.log_prob(coords)
+        for _ in range(START_ROUNDS):
+            lost = np.flatnonzero(~np.isfinite(ln_prob))
+            if not len(lost):
+                break
+            coords[lost] = rng.standard_normal((len(lost), self.n_dim))
+            ln_prob[lost] = self.log_prob(coords[lost])
+        if not np.isfinite(ln_prob).any():
+            raise ValueError("no draw from the prior has a finite posterior")
+        emcee_random = np.random.RandomState(np.random.MT19937(self.streams[1]))
+        state = RunState(
+            0, 0, coords, ln_prob, emcee_random.get_state(), 1, None, *_no_draws(coords), {}
+        )
+        self.clear(state)
+        return state
+
+    def clear(self, state: RunState) -> None:
+        """Forget the draws of a round and begin the next."""
+        state.step, state.thin = 0, self.settings.thin
+        state.chain, state.chain_ln_prob = _no_draws(state.coords)
+        state.tallies = {move: Tally(len(state.coords)) for move in ("stretch", "independence")}
+
+    def warm_up(self, state: RunState, keeper: _Keeper) -> None:
+        """Run what is left of the warm-up."""
+        while state.round < len(self.rounds):
+            n_steps = self.rounds[state.round][0]
+            self.progress.stage(self.stage(state), n_steps)
+            self.progress.advance(state.step)
+            while state.step < n_steps:
+                self.block(state, n_steps)
+                keeper.save(state)
+            self.finish_round(state)
+
+    def count(self, state: RunState, keeper: _Keeper) -> None:
+        """Sample until the target or the step limit."""
+        self.progress.stage(self.stage(state), self.settings.max_steps)
+        self.progress.advance(state.step)
+        while not ending(state, self.settings):
+            self.block(state, self.settings.max_steps)
+            if worth_a_look(state, self.settings):
+                state.history = np.vstack([state.history, look(state, self.settings)])
+                self.progress.status(status(state))
+            keeper.save(state)
+
+    def block(self, state: RunState, n_steps: int) -> None:
+        """Make the steps of one block, at most to `n_steps`, and store every thin-th."""
+        left = -(-(n_steps - state.step) // state.thin)
+        n_draws = min(BLOCK, left)
+        sampler = emcee.EnsembleSampler(
+            len(state.coords), self.n_dim, self.log_prob, moves=self.moves(state), vectorize=True
+        )
+        start = State(state.coords, log_prob=state.ln_prob, random_state=state.random_state)
+        coords, ln_prob = [], []
+        for now in sampler.sample(
+            start,
+            iterations=n_draws,
+            thin_by=state.thin,
+            store=False,
+            skip_initial_state_check=True,
+        ):
+            coords.append(now.coords.copy())
+            ln_prob.append(now.log_prob.copy())
+        state.coords, state.ln_prob, state.random_state = coords[-1], ln_prob[-1], now.random_state
+        state.chain = np.concatenate([state.chain, coords])
+        state.chain_ln_prob = np.concatenate([state.chain_ln_prob, ln_prob])
+        state.step += n_draws * state.thin
+        self.progress.advance(n_draws * state.thin)
+        _thin_if_long(state)
+
+    def moves(self, state: RunState) -> list[tuple[emcee.moves.Move, float]]:
+        """Return the round's moves; made anew for each block, so that they remember nothing."""
+        stretch = CountedStretchMove(state.tallies["stretch"])
+        if state.mixture is None:
+            return [(stretch, 1.0)]
+        independence = IndependenceMove(state.mixture, state.tallies["independence"])
+        share = self.settings.independence_share
+        return [(stretch, 1.0 - share), (independence, share)]
+
+    def finish_round(self, state: RunState) -> None:
+        """Fit the mixture to the later half of the round, and begin the next."""
+        rng = np.random.default_rng(self.streams[3 + state.round])
+        later = state.chain[len(state.chain) // 2 :].reshape(-1, self.n_dim)
+        if len(later) > FIT_SAMPLES:
+            later = later[rng.choice(len(later), FIT_SAMPLES, replace=False)]
+        state.mixture = fit_student_mixture(later, self.rounds[state.round][1], rng)
+        rates = ", ".join(f"{m} {100 * a:.0f}%" for m, a in _acceptance(state).items())
+        self.progress.note(f"{self.stage(state)} done, accepted: {rates}")
+        state.round += 1
+        self.clear(state)
+
+    def result(self, state: RunState) -> EnsembleResult:
+        """Return the result; the importance draws have a stream of their own."""
+        assert state.mixture is not None
+        rng = np.random.default_rng(self.streams[2])
+        verdict = ending(state, self.settings)
+        assert verdict is not None
+        tallies = state.tallies.values()
+        return EnsembleResult(
+            chain=state.chain,
+            ln_prob=state.chain_ln_prob,
+            steps=state.step,
+            thin=state.thin,
+            warm_up=sum(self.settings.warm_up),
+            acceptance=_acceptance(state),
+            walker_acceptance=sum(t.accepted for t in tallies) / sum(t.n_proposed for t in tallies),
+            mixture=state.mixture,
+            history=state.history,
+            stopped=verdict.reached,
+            reason=verdict.reason,
+            seed=self.settings.seed,
+            index=self.index,
+            importance=importance_sample(self.log_prob, state.mixture, rng),
+        )
+
+
+def _no_draws(coords: Array) -> tuple[Array, Array]:
+    return np.empty((0, *coords.shape)), np.empty((0, len(coords)))
+
+
+def _acceptance(state: RunState) -> dict[str, float]:
+    """Return the share of proposals taken, of moves that were made at all."""
+    return {
+        move: float(tally.accepted.mean() / tally.n_proposed)
+        for move, tally in state.tallies.items()
+        if tally.n_proposed
+    }
+
+
+def _thin_if_long(state: RunState) -> None:
+    """Drop every other draw where the chain outgrows its share of a file."""
+    draw_bytes = state.chain[0].nbytes + state.chain_ln_prob[0].nbytes
+    limit = max(int(MAX_CHAIN_BYTES / draw_bytes), 10 * BLOCK)
+    # Even, so that the last draw stays and later ones keep an equal distance.
+    if len(state.chain) >= limit and len(state.chain) % 2 == 0:
+        state.chain, state.chain_ln_prob = (
+            state.chain[1::2].copy(),
+            state.chain_ln_prob[1::2].copy(),
+        )
+        state.thin *= 2

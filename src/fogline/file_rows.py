@@ -1,0 +1,321 @@
+"""Validation of a constraint file's columns and rows against its quantity's `FileSpec`."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from typing import Any, Final
+
+import numpy as np
+from astropy.table import Table
+from numpy.typing import NDArray
+
+from fogline.ecsv_lines import RawTable
+from fogline.faults import Fault, nearest
+from fogline.quantities.file_specs import LOG_NHI_RANGE
+from fogline.quantities.spec import FileSpec, ValueColumn, interval
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+HIGHEST_REDSHIFT: Final = 20.0
+LIMITS: Final[Mapping[str, int]] = {"": 0, "upper": 1, "lower": -1}
+_TEXT_COLUMNS: Final = ("limit", "label")
+
+
+def are_counts(raw: RawTable) -> bool:
+    """Return whether the rows are counts over a path rather than measured values."""
+    return raw.column("count") is not None or raw.column("path") is not None
+
+
+def check_columns(raw: RawTable, spec: FileSpec, faults: list[Fault]) -> bool:
+    """Check which columns a file has and of which type.
+
+    Parameters
+    ----------
+    raw : RawTable
+        The file.
+    spec : FileSpec
+        The quantity's specification.
+    faults : list of Fault
+        Is appended to.
+
+    Returns
+    -------
+    bool
+        Whether the rows can be checked.
+    """
+    before = len(faults)
+    counts = spec.counts and are_counts(raw)
+    names = {column.name for column in raw.columns}
+    value_name = next(iter(spec.values.values())).name
+    for what in _missing_columns(names, spec, value_name, counts):
+        faults.append(Fault(raw.path, raw.header.line(("datatype",)), what))
+    known = _known_columns(spec, value_name)
+    for column in raw.columns:
+        if column.name not in known:
+            what = f"unknown column '{column.name}'; {nearest(column.name, known)}"
+        elif what := _clash(column.name, names, value_name, counts):
+            pass
+        elif column.name not in _TEXT_COLUMNS and not column.numeric:
+            what = f"datatype of column '{column.name}' is {column.datatype}, must be float64"
+        elif column.name == "limit" and column.datatype != "string":
+            what = f"datatype of column 'limit' is {column.datatype}, must be string"
+        else:
+            continue
+        faults.append(Fault(raw.path, column.line, what))
+    return len(faults) == before
+
+
+def _known_columns(spec: FileSpec, value_name: str) -> list[str]:
+    known = ["z", "z_lo", "z_hi", value_name, "err", "err_lo", "err_hi", *_TEXT_COLUMNS]
+    known += ["count", "path"] if spec.counts else []
+    return known + (["log_nhi_lo", "log_nhi_hi"] if spec.column_bins else [])
+
+
+def _missing_columns(names: set[str], spec: FileSpec, value_name: str, counts: bool) -> list[str]:
+    pairs = [("z_lo", "z_hi")] if names & {"z_lo", "z_hi"} else []
+    pairs += [("err_lo", "err_hi")] if names & {"err_lo", "err_hi"} else []
+    pairs += [("count", "path")] if counts else []
+    pairs += [("log_nhi_lo", "log_nhi_hi")] if spec.column_bins else []
+    missing = [name for pair in pairs for name in pair if name not in names]
+    faults = [f"lacks column '{name}', which {spec.quantity} needs here" for name in missing]
+    if not names & {"z", "z_lo", "z_hi"}:
+        faults.append("lacks column 'z' (or 'z_lo' and 'z_hi')")
+    if not counts and value_name not in names:
+        also = " (or 'count' and 'path')" if spec.counts else ""
+        faults.append(f"lacks column '{value_name}'{also}")
+    if not counts and not names & {"err", "err_lo", "err_hi", "limit"}:
+        faults.append("lacks column 'err' (or 'err_lo' and 'err_hi')")
+    return faults
+
+
+def _clash(name: str, names: set[str], value_name: str, counts: bool) -> str:
+    if name == "z" and names & {"z_lo", "z_hi"}:
+        return "column 'z' stands beside 'z_lo' and 'z_hi'; allowed is one form only"
+    if name == "err" and names & {"err_lo", "err_hi"}:
+        return "column 'err' stands beside 'err_lo' and 'err_hi'; allowed is one form only"
+    if counts and name in (value_name, "err", "err_lo", "err_hi", "limit"):
+        return f"column '{name}' stands beside 'count' and 'path', whose errors are Poisson"
+    return ""
+
+
+class Rows:
+    """The rows of one file as arrays, and the checks on them.
+
+    Parameters
+    ----------
+    raw : RawTable
+        The file.
+    table : astropy.table.Table
+        Its rows as astropy reads them.
+    faults : list of Fault
+        Is appended to.
+    """
+
+    def __init__(self, raw: RawTable, table: Table, faults: list[Fault]) -> None:
+        self._raw = raw
+        self._table = table
+        self._faults = faults
+
+    @property
+    def lines(self) -> tuple[int, ...]:
+        """Line of each row."""
+        return tuple(row.line for row in self._raw.rows)
+
+    def has(self, name: str) -> bool:
+        """Return whether the file has a column."""
+        return name in self._table.colnames
+
+    def numbers(self, name: str) -> Array:
+        """Return a column of numbers, NaN where a cell is empty or the column is absent."""
+        if not self.has(name):
+            return np.full(len(self._table), np.nan)
+        column = np.ma.asarray(self._table[name]).astype(float)
+        return np.asarray(np.ma.filled(column, np.nan), dtype=float)
+
+    def texts(self, name: str) -> tuple[str, ...]:
+        """Return a column of text, empty where a cell is empty or the column is absent."""
+        if not self.has(name):
+            return ("",) * len(self._table)
+        return tuple("" if cell is np.ma.masked else str(cell) for cell in self._table[name])
+
+    def cell(self, name: str, row: int) -> str:
+        """Return a cell as the file writes it."""
+        return self._raw.rows[row].cells[self._table.colnames.index(name)]
+
+    def fault_where(self, bad: Mask, name: str, must: str | Callable[[int], str]) -> None:
+        """Add one fault for each bad row of a column.
+
+        Parameters
+        ----------
+        bad : ndarray of bool, shape (n_rows,)
+            Where the column's number is wrong.
+        name : str
+            The column.
+        must : str or callable
+            What is allowed; of the row where it depends on it.
+        """
+        for row in np.flatnonzero(bad):
+            found = self.cell(name, row)
+            found = f"is {found}" if found else "is empty"
+            allowed = must if isinstance(must, str) else must(row)
+            what = f"{name} {found}, must be {allowed}"
+            self._faults.append(Fault(self._raw.path, self.lines[row], what))
+
+    def between(
+        self, name: str, minimum: float, maximum: float, *, where: Mask | None = None,
+        closed: bool = False, hint: str = "",
+    ) -> Array:
+        """Return a column after checking that its numbers are finite and in a range.
+
+        Parameters
+        ----------
+        name : str
+            The column, which the file has.
+        minimum, maximum : float
+            The range.
+        where : ndarray of bool, shape (n_rows,), optional
+            Rows to check; all where not given.
+        closed : bool
+            Whether both ends are allowed.
+        hint : str
+            Added to what is allowed.
+
+        Returns
+        -------
+        ndarray, shape (n_rows,)
+        """
+        x = self.numbers(name)
+        inside = (x >= minimum) & (x <= maximum) if closed else (x > minimum) & (x < maximum)
+        bad = ~(inside & np.isfinite(x))
+        bad = bad if where is None else bad & where
+        self.fault_where(bad, name, interval(minimum, maximum, not closed) + hint)
+        return x
+
+    def ordered(self, low_name: str, high_name: str) -> None:
+        """Check that one column is smaller than the other in every row."""
+        low, high = self.numbers(low_name), self.numbers(high_name)
+        bad = np.isfinite(low) & np.isfinite(high) & ~(low < high)
+        self.fault_where(
+            bad, high_name, lambda row: f"greater than {low_name} = {self.cell(low_name, row)}"
+        )
+
+
+def check_rows(
+    rows: Rows, spec: FileSpec, value: ValueColumn | None, counts: bool, meta: Mapping[str, Any]
+) -> dict[str, Any]:
+    """Return the arrays of a `fogline.datasets.DataSet`, with faults appended by `rows`.
+
+    Parameters
+    ----------
+    rows : Rows
+        The file's rows.
+    spec : FileSpec
+        The quantity's specification.
+    value : ValueColumn or None
+        The measured column's specification; None where the file does not say its form.
+    counts : bool
+        Whether the rows are counts.
+    meta : mapping
+        The file's meta with defaults.
+
+    Returns
+    -------
+    dict
+        Keyword arguments of `DataSet` that hold one entry a row.
+    """
+    z_lo, z_hi = _check_redshifts(rows)
+    log_nhi_lo, log_nhi_hi = _check_column_bins(rows, spec)
+    measured = _check_counts(rows) if counts else _check_values(rows, value, meta)
+    return {
+        "z_lo": z_lo,
+        "z_hi": z_hi,
+        "log_nhi_lo": log_nhi_lo,
+        "log_nhi_hi": log_nhi_hi,
+        "labels": rows.texts("label"),
+        "lines": rows.lines,
+        **measured,
+    }
+
+
+def _check_redshifts(rows: Rows) -> tuple[Array, Array]:
+    def redshift(name: str) -> Array:
+        z = rows.numbers(name)
+        bad = ~((z > 0.0) & (z <= HIGHEST_REDSHIFT))
+        rows.fault_where(bad, name, f"a redshift in (0, {HIGHEST_REDSHIFT:g}]")
+        return z
+
+    if rows.has("z"):
+        z = redshift("z")
+        return z, z.copy()
+    edges = redshift("z_lo"), redshift("z_hi")
+    rows.ordered("z_lo", "z_hi")
+    return edges
+
+
+def _check_column_bins(rows: Rows, spec: FileSpec) -> tuple[Array, Array]:
+    if not spec.column_bins:
+        return rows.numbers("log_nhi_lo"), rows.numbers("log_nhi_hi")
+    edges = (
+        rows.between("log_nhi_lo", *LOG_NHI_RANGE, closed=True),
+        rows.between("log_nhi_hi", *LOG_NHI_RANGE, closed=True),
+    )
+    rows.ordered("log_nhi_lo", "log_nhi_hi")
+    return edges
+
+
+def _check_counts(rows: Rows) -> dict[str, Any]:
+    count = rows.numbers("count")
+    whole = np.isfinite(count) & (count >= 0.0) & (count == np.floor(count))
+    rows.fault_where(~whole, "count", "a whole number >= 0")
+    path = rows.between("path", 0.0, np.inf)
+    none = np.full(len(count), np.nan)
+    return {
+        "observed": count,
+        "err_lo": none,
+        "err_hi": none.copy(),
+        "limit": np.zeros(len(count), dtype=np.int64),
+        "search_path": path,
+    }
+
+
+def _check_values(
+    rows: Rows, value: ValueColumn | None, meta: Mapping[str, Any]
+) -> dict[str, Any]:
+    limit = _check_limits(rows)
+    if value is None:
+        name, low, high = "value", -np.inf, np.inf
+    else:
+        name, low, high = value.name, value.minimum, value.maximum
+    observed = rows.between(name, low, high)
+    # A limit without an error is taken as sharp as its confidence says, which needs a linear
+    # scale with a zero: in logarithms the width must be given.
+    free = value is None or not (value.logarithmic or meta.get("likelihood") == "lognormal")
+    may_lack = (limit != 0) & free
+    err_lo, err_hi = _check_errors(rows, name, may_lack)
+    return {
+        "observed": observed,
+        "err_lo": err_lo,
+        "err_hi": err_hi,
+        "limit": limit,
+        "search_path": np.full(len(observed), np.nan),
+    }
+
+
+def _check_limits(rows: Rows) -> NDArray[np.int64]:
+    texts = rows.texts("limit")
+    bad = np.array([text not in LIMITS for text in texts], dtype=bool)
+    rows.fault_where(bad, "limit", "upper, lower or empty (\"\")")
+    return np.array([LIMITS.get(text, 0) for text in texts], dtype=np.int64)
+
+
+def _check_errors(rows: Rows, value_name: str, may_lack: Mask) -> tuple[Array, Array]:
+    names = ("err", "err") if rows.has("err") else ("err_lo", "err_hi")
+    if not rows.has(names[0]):
+        hint = "a limit, or have an error (column 'err')"
+        rows.fault_where(~may_lack, value_name, hint)
+    else:
+        for name in dict.fromkeys(names):
+            stated = ~(may_lack & np.isnan(rows.numbers(name)))
+            rows.between(name, 0.0, np.inf, where=stated)
+    return rows.numbers(names[0]), rows.numbers(names[1])

@@ -1,0 +1,141 @@
+"""The prior, and the map from a unit normal to parameters.
+
+Sampling runs in coordinates x whose prior is a unit normal in every direction: no walls, and the
+prior is the natural over-dispersed start. A scipy frozen distribution D gives θ = D.ppf(Φ(x)).
+
+The spline's prior says what is known of its shape: log10 f at one pivot (the anchor), then the
+logarithmic slopes β = −d log f / d log N of the intervals, from the anchor outwards. As a ``walk``
+every slope is its neighbour's plus a step, as ``independent`` slopes each has the same prior; both
+are cut to β > 0, so that f falls with N. Where the data are silent this is what the posterior shows.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import ndtr, ndtri
+
+from fogline.distributions import frozen
+from fogline.settings import Distribution, ModelSettings
+
+Array = NDArray[np.float64]
+Quantile = Callable[[Array, Array], Array]
+
+
+def unit_normal_map(spec: Distribution) -> Callable[[Array], Array]:
+    """Return the map x → D.ppf(Φ(x)) of a distribution.
+
+    Parameters
+    ----------
+    spec : mapping
+        scipy name under ``dist`` and its arguments.
+    """
+    distribution = frozen(spec)
+    if spec["dist"] == "norm":
+        loc, scale = distribution.mean(), distribution.std()
+        return lambda x: loc + scale * x
+    # Each half from its own tail, or quantiles beyond 8σ would round to infinity.
+    return lambda x: np.where(
+        x < 0.0, distribution.ppf(ndtr(np.minimum(x, 0.0))), distribution.isf(ndtr(-np.maximum(x, 0.0)))
+    )
+
+
+def cut_quantile(spec: Distribution) -> Quantile:
+    """Return (x, floor) → quantile Φ(x) of a distribution cut to values above a floor.
+
+    Parameters
+    ----------
+    spec : mapping
+        scipy name under ``dist`` and its arguments.
+    """
+    distribution: Any = frozen(spec)
+    if spec["dist"] == "norm":
+        loc, scale = distribution.mean(), distribution.std()
+        # sf and isf through ndtr and ndtri: this runs once per slope in the hot loop.
+        return lambda x, floor: loc - scale * ndtri(ndtr(-x) * ndtr((loc - floor) / scale))
+    return lambda x, floor: distribution.isf(ndtr(-x) * distribution.sf(floor))
+
+
+@dataclass(frozen=True)
+class Prior:
+    """Prior of the parameter vector θ (log f at the pivots, exponents).
+
+    Parameters
+    ----------
+    model : ModelSettings
+        Pivots and priors.
+    """
+
+    model: ModelSettings
+
+    @property
+    def n_dim(self) -> int:
+        """Number of coordinates x, equal to the number of parameters."""
+        return len(self.model.pivots) + len(self.model.evolution.pivots)
+
+    @cached_property
+    def _anchor_index(self) -> int:
+        return self.model.pivots.index(self.model.prior.anchor_log_nhi)
+
+    @cached_property
+    def _maps(self) -> tuple[Callable[[Array], Array], Quantile, Quantile]:
+        prior = self.model.prior
+        first = cut_quantile(prior.first_slope)
+        step = cut_quantile(prior.slope_step) if prior.slope_step is not None else first
+        return unit_normal_map(prior.anchor), first, step
+
+    @cached_property
+    def _exponent_maps(self) -> tuple[Callable[[Array], Array], ...]:
+        return tuple(unit_normal_map(spec) for spec in self.model.evolution.priors)
+
+    def ln_density(self, x: Array) -> Array:
+        """Return the unit normal's ln density, shape (n,), at x, shape (n, n_dim)."""
+        return np.asarray(-0.5 * (np.einsum("ij,ij->i", x, x) + self.n_dim * np.log(2.0 * np.pi)))
+
+    def to_parameters(self, x: Array) -> Array:
+        """Return the parameters that belong to unit-normal coordinates.
+
+        Parameters
+        ----------
+        x : ndarray, shape (n, n_dim)
+
+        Returns
+        -------
+        ndarray, shape (n, n_dim)
+            log10 f at every pivot (decreasing), then the exponents.
+        """
+        n_pivots = len(self.model.pivots)
+        theta = np.empty_like(x)
+        theta[:, :n_pivots] = self._pivot_values(x[:, :n_pivots])
+        for column, quantile in enumerate(self._exponent_maps, start=n_pivots):
+            theta[:, column] = quantile(x[:, column])
+        return theta
+
+    def _pivot_values(self, x: Array) -> Array:
+        """Return log f at the pivots; x[:, 0] is the anchor's, the others the slopes' in order."""
+        anchor = self._maps[0]
+        drops = self._slopes(x[:, 1:]) * np.diff(self.model.pivots)
+        fall = np.zeros_like(x)
+        np.cumsum(drops, axis=1, out=fall[:, 1:])
+        at = self._anchor_index
+        return np.asarray((anchor(x[:, 0]) + fall[:, at])[:, None] - fall)
+
+    def _slopes(self, x: Array) -> Array:
+        """Return β of every interval, shape (n, n_pivots - 1), from the anchor outwards."""
+        _, first, step = self._maps
+        zero = np.zeros(len(x))
+        if self.model.prior.slope_kind == "independent":
+            return np.stack([first(x[:, i], zero) for i in range(x.shape[1])], axis=1)
+        slopes = np.empty_like(x)
+        start = max(self._anchor_index - 1, 0)
+        slopes[:, start] = first(x[:, start], zero)
+        for i in range(start - 1, -1, -1):
+            slopes[:, i] = slopes[:, i + 1] + step(x[:, i], -slopes[:, i + 1])
+        for i in range(start + 1, x.shape[1]):
+            slopes[:, i] = slopes[:, i - 1] + step(x[:, i], -slopes[:, i - 1])
+        return slopes

@@ -1,0 +1,141 @@
+"""Progress of an ensemble: a bar with rate on a terminal, plain lines in a log."""
+
+from __future__ import annotations
+
+import sys
+from typing import Protocol, TextIO
+
+from tqdm import tqdm
+
+
+class Progress(Protocol):
+    """What a run tells about itself."""
+
+    def stage(self, name: str, n_steps: int) -> None:
+        """Begin a stage of at most `n_steps` steps."""
+
+    def advance(self, n_steps: int) -> None:
+        """Count steps done in the stage."""
+
+    def note(self, text: str) -> None:
+        """Say something worth keeping."""
+
+    def status(self, text: str) -> None:
+        """Say how it stands."""
+
+    def close(self) -> None:
+        """Finish."""
+
+
+class Silent:
+    """Says nothing."""
+
+    def stage(self, name: str, n_steps: int) -> None:
+        """Ignore."""
+
+    def advance(self, n_steps: int) -> None:
+        """Ignore."""
+
+    def note(self, text: str) -> None:
+        """Ignore."""
+
+    def status(self, text: str) -> None:
+        """Ignore."""
+
+    def close(self) -> None:
+        """Ignore."""
+
+
+class Lines:
+    """One line per stage and status; no times, so that logs of equal runs are equal.
+
+    Parameters
+    ----------
+    stream : text stream
+        Where to write.
+    label : str
+        Begins every line.
+    """
+
+    def __init__(self, stream: TextIO, label: str) -> None:
+        self._stream = stream
+        self._label = label
+
+    def stage(self, name: str, n_steps: int) -> None:
+        """Write the stage's name and length."""
+        self.note(f"{name}, at most {n_steps} steps")
+
+    def advance(self, n_steps: int) -> None:
+        """Ignore: a log needs no pulse."""
+
+    def note(self, text: str) -> None:
+        """Write the text."""
+        print(f"{self._label}: {text}", file=self._stream, flush=True)
+
+    def status(self, text: str) -> None:
+        """Write the text."""
+        self.note(text)
+
+    def close(self) -> None:
+        """Nothing is open."""
+
+
+class Bar:
+    """A bar per stage, with steps per second and the latest status.
+
+    Parameters
+    ----------
+    stream : text stream
+        A terminal.
+    label : str
+        Begins every bar.
+    """
+
+    def __init__(self, stream: TextIO, label: str) -> None:
+        self._stream = stream
+        self._label = label
+        self._bar: tqdm | None = None
+
+    def stage(self, name: str, n_steps: int) -> None:
+        """Close the former bar and open one."""
+        self.close()
+        text = f"{self._label}: {name}"
+        self._bar = tqdm(total=n_steps, desc=text, unit="step", file=self._stream)
+
+    def advance(self, n_steps: int) -> None:
+        """Move the bar."""
+        if self._bar is not None:
+            self._bar.update(n_steps)
+
+    def note(self, text: str) -> None:
+        """Write the text above the bar."""
+        tqdm.write(f"{self._label}: {text}", file=self._stream)
+
+    def status(self, text: str) -> None:
+        """Put the text behind the bar."""
+        if self._bar is not None:
+            self._bar.set_postfix_str(text)
+
+    def close(self) -> None:
+        """Leave the bar as it stands."""
+        if self._bar is not None:
+            self._bar.close()
+            self._bar = None
+
+
+def progress_for(label: str, stream: TextIO | None = None) -> Progress:
+    """Return a bar where the stream is a terminal, lines elsewhere.
+
+    Parameters
+    ----------
+    label : str
+        What runs, e.g. ``joint, ensemble 1``.
+    stream : text stream, optional
+        By default stderr.
+
+    Returns
+    -------
+    Progress
+    """
+    stream = sys.stderr if stream is None else stream
+    return Bar(stream, label) if stream.isatty() else Lines(stream, label)

@@ -1,0 +1,98 @@
+"""Quadrature nodes in column density and redshift.
+
+f has kinks at its pivots and evolution pivots, and integrands end at column limits. Between those
+Gauss-Legendre converges geometrically, so panels end there. Numbers of nodes were chosen so that
+every quantity is right to 1e-5 for splines far steeper than any posterior's; the proof, against
+adaptive quadrature over random splines, is ``tests/properties/test_accuracy.py``.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from functools import lru_cache
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fogline.cosmology import Cosmology
+from fogline.distribution import LN10
+
+Array = NDArray[np.float64]
+
+NODES_PER_PANEL = 3
+NODES_PER_DEX = 3.0
+REDSHIFT_NODES = 5
+
+
+@lru_cache(maxsize=64)
+def _gauss_legendre(n_nodes: int) -> tuple[Array, Array]:
+    return np.polynomial.legendre.leggauss(n_nodes)
+
+
+def interval_nodes(lo: float, hi: float, n_nodes: int) -> tuple[Array, Array]:
+    """Return Gauss-Legendre nodes and weights on an interval.
+
+    Parameters
+    ----------
+    lo, hi : float
+        Ends of the interval.
+    n_nodes : int
+        Number of nodes.
+
+    Returns
+    -------
+    nodes, weights : ndarray, shape (n_nodes,)
+        The weights add up to ``hi - lo``.
+    """
+    nodes, weights = _gauss_legendre(n_nodes)
+    half = 0.5 * (hi - lo)
+    return lo + half * (1.0 + nodes), half * weights
+
+
+def column_nodes(lo: float, hi: float, kinks: Iterable[float]) -> tuple[Array, Array]:
+    """Return nodes in log N and weights for integrals over dN.
+
+    Parameters
+    ----------
+    lo, hi : float [dex of cm^-2]
+        Limits of the integral.
+    kinks : iterable of float [dex of cm^-2]
+        Where the integrand is not smooth; those outside the limits are passed over.
+
+    Returns
+    -------
+    log_nhi : ndarray, shape (n_nodes,) [dex of cm^-2]
+    weights : ndarray, shape (n_nodes,) [cm^-2]
+        ``g(log_nhi) @ weights`` is the integral of g dN.
+    """
+    edges = [lo, *sorted(k for k in kinks if lo < k < hi), hi]
+    panels = [
+        interval_nodes(a, b, NODES_PER_PANEL + int(np.ceil(NODES_PER_DEX * (b - a))))
+        for a, b in zip(edges[:-1], edges[1:], strict=True)
+    ]
+    log_nhi = np.concatenate([nodes for nodes, _ in panels])
+    return log_nhi, np.concatenate([w for _, w in panels]) * LN10 * 10.0**log_nhi
+
+
+def redshift_nodes(z_lo: float, z_hi: float, cosmology: Cosmology) -> tuple[Array, Array]:
+    """Return nodes and weights of a mean over a redshift bin, weighted by absorption distance.
+
+    Parameters
+    ----------
+    z_lo, z_hi : float
+        The bin; a single node where they are equal.
+    cosmology : Cosmology
+        Gives the absorption distance.
+
+    Returns
+    -------
+    z, weights : ndarray, shape (n_nodes,)
+        The weights add up to 1.
+    """
+    if z_lo == z_hi:
+        return np.array([z_lo]), np.ones(1)
+    # Wide bins get more nodes: with exponents up to 6 five nodes hold 1e-9 over 20% in 1 + z.
+    n_nodes = REDSHIFT_NODES + int(10.0 * np.log((1.0 + z_hi) / (1.0 + z_lo)))
+    z, weights = interval_nodes(z_lo, z_hi, n_nodes)
+    weights = weights * cosmology.dx_dz(z)
+    return z, weights / weights.sum()

@@ -1,0 +1,55 @@
+"""Lyα effective optical depth, as τ, mean flux or decrement.
+
+    τ_eff(z) = (1+z)/λ_α · dX/dz · ∫ f(N,z) W(N) dN
+
+W is the rest equivalent width of the exact Voigt line, averaged over the Doppler parameters
+(`fogline.doppler`). The integral runs over the columns that the file says were counted: most
+published values remove absorbers that are optically thick. Neither τ_eff nor the flux depends on
+the cosmology, since f dX/dz is what is counted on the sky.
+
+In a redshift bin the mean is taken of what the file states (τ, flux or decrement).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fogline.atomic import LYMAN_ALPHA
+from fogline.datasets import DataSet
+from fogline.doppler import mean_equivalent_width
+from fogline.quadrature import column_nodes
+from fogline.quantities import file_specs
+from fogline.quantities.base import Block, Setting, Term, assemble, bin_mean, row_redshifts
+
+Array = NDArray[np.float64]
+
+
+class LyaOpacity:
+    """Effective optical depth of the Lyα forest."""
+
+    spec = file_specs.LYA_OPACITY
+    label = r"Ly$\alpha$ effective optical depth"
+
+    def respond(self, data: DataSet, setting: Setting) -> Block:
+        """Return one raw prediction, τ_eff, for every redshift node."""
+        lo, hi = float(data.meta["log_nhi_min"]), float(data.meta["log_nhi_max"])
+        log_nhi, d_nhi = column_nodes(lo, hi, setting.distribution.kinks)
+        width = mean_equivalent_width(log_nhi, setting.doppler) / LYMAN_ALPHA.wavelength
+        nodes = row_redshifts(data, setting)
+        terms = [
+            (i, Term(z, log_nhi, (1.0 + z) * setting.cosmology.dx_dz(z) * width * d_nhi))
+            for i, (_, z, _) in enumerate(nodes)
+        ]
+        return assemble(terms, len(nodes), mean=bin_mean(nodes, data.n_rows))
+
+    def reduce(self, data: DataSet, raw: Array, constants: Mapping[str, Array]) -> Array:
+        """Return τ, mean flux or decrement of every row."""
+        form = data.meta["form"]
+        if form == "mean_flux":
+            raw = np.exp(-raw)
+        elif form == "decrement":
+            raw = -np.expm1(-raw)
+        return np.asarray(raw @ constants["mean"])

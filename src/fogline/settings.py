@@ -1,0 +1,102 @@
+"""Settings of a study as frozen, typed objects; `fogline.config` makes them from a config file.
+
+Light on purpose: the workflow imports this at every start, so nothing here pulls in numpy, scipy
+or astropy.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+Distribution = Mapping[str, Any]
+"""A scipy distribution by name and arguments, e.g. ``{dist: norm, loc: 1.5, scale: 1.5}``."""
+
+
+@dataclass(frozen=True)
+class CosmologySettings:
+    """Cosmology in which results are quoted (`fogline.cosmology.Cosmology` takes the same)."""
+
+    H0: float
+    Om0: float
+    Ode0: float | None = None
+
+
+@dataclass(frozen=True)
+class EvolutionSettings:
+    """Exponents of the redshift evolution: where they sit and their prior."""
+
+    pivots: tuple[float, ...]
+    priors: tuple[Distribution, ...]  # one per evolution pivot
+
+
+@dataclass(frozen=True)
+class SplinePriorSettings:
+    """Prior of the spline: f at one pivot, then the logarithmic slopes away from it.
+
+    ``slope_kind`` is ``walk`` (each slope is its neighbour's plus a step, kept positive) or
+    ``independent`` (every slope has the prior `first_slope`, cut to positive values).
+    """
+
+    anchor_log_nhi: float
+    anchor: Distribution
+    slope_kind: str
+    first_slope: Distribution
+    slope_step: Distribution | None
+
+
+@dataclass(frozen=True)
+class ModelSettings:
+    """The column-density distribution: pivots, evolution, priors, Doppler parameter."""
+
+    reference_redshift: float
+    pivots: tuple[float, ...]
+    evolution: EvolutionSettings
+    prior: SplinePriorSettings
+    doppler: Distribution  # {dist: fixed, b: 26.0}, {dist: hui_rutledge, b_sigma: 24.0} or scipy
+
+
+@dataclass(frozen=True)
+class SamplerSettings:
+    """Ensembles, their warm-up, and when to stop."""
+
+    walkers: int
+    ensembles: int
+    seed: int
+    target_ess: int  # bulk and tail, all ensembles together
+    max_rhat: float
+    max_steps: int  # counted steps of one ensemble after its warm-up
+    thin: int  # every thin-th step is stored
+    warm_up: tuple[int, ...]  # steps of each warm-up round
+    components: tuple[int, ...]  # mixture components fitted after each round
+    independence_share: float  # share of independence proposals after the first round
+
+
+@dataclass(frozen=True)
+class DeriveSettings:
+    """Grids of the derived tables and the number of posterior draws behind their bands."""
+
+    redshifts: tuple[float, ...]
+    column_redshifts: tuple[float, ...]  # redshifts of tables that run along log N
+    draws: int
+
+
+@dataclass(frozen=True)
+class AnalysisSettings:
+    """One named fit: data sets, model, sampler, derived quantities."""
+
+    name: str
+    datasets: tuple[str, ...]
+    cosmology: CosmologySettings
+    model: ModelSettings
+    sampler: SamplerSettings
+    derive: DeriveSettings
+
+
+@dataclass(frozen=True)
+class Study:
+    """Every analysis of one config, in the order of the file."""
+
+    analyses: Mapping[str, AnalysisSettings]
+    raw: Mapping[str, Any] = field(repr=False, default_factory=dict)

@@ -1,0 +1,217 @@
+"""Where the Lyman-continuum optical depth reaches one.
+
+A photon seen at 912 Å at z_912 had, at an absorber at z' > z_912, ν/ν_912 = (1+z')/(1+z_912)::
+
+    τ(z_912; z_em) = ∫_{z_912}^{z_em} dz' (dX/dz') ∫ f(N,z') {1 − exp[−N σ(ν)]} dN
+
+With s = ln[(1+z_em)/(1+z_912)], q(s) = τ/s is smooth and finite at s = 0. Its Chebyshev coefficients
+on 0 < s < ln(1+z_em) are linear in f: they are the raw predictions. From a table of q the first
+crossing of s q(s) = 1 is solved for all walkers and sources at once; the *first*, since τ need not
+be monotone in s (the cross-section falls along the path). Where there is none above redshift 0 the
+answer is infinite: beyond reach.
+
+f between its redshift nodes is interpolated in ln(1+z) (Chebyshev, `Z_NODES` nodes from 0 to the
+highest source). Accuracy against adaptive quadrature: ``tests/properties/test_accuracy.py``.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.polynomial import chebyshev
+from numpy.typing import ArrayLike, NDArray
+
+from fogline.atomic import photoionization_cross_section
+from fogline.cosmology import Cosmology
+from fogline.distribution import ColumnDistribution
+from fogline.quadrature import column_nodes, interval_nodes
+
+Array = NDArray[np.float64]
+
+Z_NODES = 16
+COEFFICIENTS = 14
+PATH_NODES = 16
+NEWTON_STEPS = 4
+
+# q is tabulated evenly in v = √(s / s_max), dense near s = 0 where free paths of high-redshift
+# sources end; the cubic through four neighbours is then good to 1e-6 for any draw from
+# a broad prior, and to 1e-7 for most.
+_TABLE_SIZE = 64
+_TABLE_STEP = np.arange(_TABLE_SIZE + 1) / _TABLE_SIZE
+_TABLE_BASIS = chebyshev.chebvander(2.0 * _TABLE_STEP**2 - 1.0, COEFFICIENTS - 1).T
+
+
+def chebyshev_points(lo: float, hi: float, n_points: int) -> Array:
+    """Return Chebyshev points of the first kind on an interval, shape (n_points,)."""
+    return 0.5 * (lo + hi) + 0.5 * (hi - lo) * chebyshev.chebpts1(n_points)
+
+
+def interpolation_matrix(nodes: Array, points: Array) -> Array:
+    """Return M for which ``g(points) = M @ g(nodes)``, shape (n_points, n_nodes).
+
+    Parameters
+    ----------
+    nodes : ndarray, shape (n_nodes,)
+        Distinct; Chebyshev points keep the matrix small in norm.
+    points : ndarray, shape (n_points,)
+    """
+    span = nodes.max() - nodes.min()
+    to_unit = lambda x: 2.0 * (x - nodes.min()) / span - 1.0  # noqa: E731
+    degree = len(nodes) - 1
+    vandermonde = chebyshev.chebvander(to_unit(nodes), degree)
+    return np.asarray(chebyshev.chebvander(to_unit(points), degree) @ np.linalg.inv(vandermonde))
+
+
+def redshift_grid(z_max: float) -> Array:
+    """Return redshifts, shape (Z_NODES,), on which f is tabulated from 0 to `z_max`."""
+    # First-kind points do not reach the ends; stretched so that they do, no point extrapolates.
+    points = chebyshev.chebpts1(Z_NODES)
+    half = 0.5 * np.log1p(z_max)
+    return np.expm1(half * (1.0 + points / points.max()))
+
+
+def continuum_weights(
+    z_near: float,
+    z_far: float,
+    grid: Array,
+    distribution: ColumnDistribution,
+    cosmology: Cosmology,
+) -> tuple[Array, Array]:
+    """Return the weights of τ_LC between two redshifts on the nodes (z grid × log N).
+
+    Parameters
+    ----------
+    z_near, z_far : float
+        z_912 and z_em.
+    grid : ndarray, shape (n_z,)
+        Redshifts at which f is tabulated.
+    distribution : ColumnDistribution
+    cosmology : Cosmology
+        Cosmology of f(N, X).
+
+    Returns
+    -------
+    log_nhi : ndarray, shape (n_columns,) [dex of cm^-2]
+    weights : ndarray, shape (n_z, n_columns)
+    """
+    log_nhi, d_nhi = column_nodes(
+        distribution.pivots[0], distribution.pivots[-1], distribution.kinks
+    )
+    path, d_path = interval_nodes(np.log1p(z_near), np.log1p(z_far), PATH_NODES)
+    ratio = np.exp(path) / (1.0 + z_near)
+    depth = 10.0**log_nhi * photoionization_cross_section(ratio)[:, None]
+    absorbed = -np.expm1(-depth) * d_nhi
+    # dz = (1 + z) d ln(1 + z).
+    along = d_path * np.exp(path) * cosmology.dx_dz(np.expm1(path))
+    interpolate = interpolation_matrix(np.log1p(grid), path)
+    return log_nhi, np.einsum("p,pz,pn->zn", along, interpolate, absorbed, optimize=True)
+
+
+def depth_coefficients(
+    z_em: float, grid: Array, distribution: ColumnDistribution, cosmology: Cosmology
+) -> tuple[Array, Array]:
+    """Return the weights that give the Chebyshev coefficients of q(s) = τ/s of one source.
+
+    Parameters
+    ----------
+    z_em : float
+    grid, distribution, cosmology
+        As in `continuum_weights`.
+
+    Returns
+    -------
+    log_nhi : ndarray, shape (n_columns,) [dex of cm^-2]
+    weights : ndarray, shape (COEFFICIENTS, n_z, n_columns)
+    """
+    s = chebyshev_points(0.0, float(np.log1p(z_em)), COEFFICIENTS)
+    rows = []
+    for step in s:
+        z_near = float(np.expm1(np.log1p(z_em) - step))
+        log_nhi, weights = continuum_weights(z_near, z_em, grid, distribution, cosmology)
+        rows.append(weights / step)
+    to_coefficients = np.linalg.inv(chebyshev.chebvander(chebyshev.chebpts1(len(s)), len(s) - 1))
+    return log_nhi, np.tensordot(to_coefficients, np.array(rows), axes=1)
+
+
+def solve_unit_depth(coefficients: Array, z_em: ArrayLike) -> Array:
+    """Return s at the first τ(s) = 1, infinite where τ stays below one down to redshift 0.
+
+    Parameters
+    ----------
+    coefficients : ndarray, shape (..., n_sources, COEFFICIENTS)
+        Chebyshev coefficients of τ/s on 0 < s < ln(1+z_em).
+    z_em : array_like, shape (n_sources,)
+
+    Returns
+    -------
+    ndarray, shape (..., n_sources)
+        ln[(1+z_em)/(1+z_912)].
+    """
+    s_max = np.log1p(np.asarray(z_em, dtype=float))
+    q = coefficients @ _TABLE_BASIS
+    reached = q * _TABLE_STEP**2 >= 1.0 / s_max[..., None]
+    first = np.argmax(reached, axis=-1)
+    start = np.clip(first - 2, 0, _TABLE_SIZE - 3)
+    cubic = _cubic(q, start)
+    # In the form v √(s_max q) = 1, nearly linear in v, down to the shortest paths.
+    last = (first - start).astype(float)
+    t = last
+    for _ in range(NEWTON_STEPS):
+        value, slope = _evaluate(cubic, t)
+        value = np.maximum(value, np.finfo(float).tiny)
+        v = (start + t) / _TABLE_SIZE
+        root = np.sqrt(s_max * value)
+        step = (v * root - 1.0) / (root * (1.0 / _TABLE_SIZE + 0.5 * v * slope / value))
+        t = np.clip(t - step, last - 1.0, last)
+    s = s_max * ((start + t) / _TABLE_SIZE) ** 2
+    return np.where(reached.any(axis=-1), s, np.inf)
+
+
+def length_table(z_em: float, cosmology: Cosmology, comoving: bool) -> Array:
+    """Return length/s of one source at the tabulated s, shape (_TABLE_SIZE + 1,) [Mpc].
+
+    Parameters
+    ----------
+    z_em : float
+    cosmology : Cosmology
+        The data's cosmology.
+    comoving : bool
+        Comoving instead of proper length.
+    """
+    length = cosmology.comoving_length if comoving else cosmology.proper_length
+    # At s = 0 the limit of length/s, taken as that of a step too short to matter.
+    s = np.log1p(z_em) * np.maximum(_TABLE_STEP**2, 1e-9)
+    return np.asarray(length((1.0 + z_em) * np.exp(-s) - 1.0, z_em) / s)
+
+
+def path_length(s: Array, z_em: ArrayLike, table: Array) -> Array:
+    """Return the length [Mpc] that belongs to s, infinite where s is.
+
+    Parameters
+    ----------
+    s : ndarray, shape (..., n_sources)
+    z_em : array_like, shape (n_sources,)
+    table : ndarray, shape (n_sources, _TABLE_SIZE + 1) [Mpc]
+        From `length_table`.
+    """
+    reached = np.isfinite(s)
+    finite = np.where(reached, s, 0.0)
+    v = np.sqrt(finite / np.log1p(np.asarray(z_em, dtype=float))) * _TABLE_SIZE
+    start = np.clip(v.astype(np.int64) - 1, 0, _TABLE_SIZE - 3)
+    cubic = _cubic(np.broadcast_to(table, (*s.shape, table.shape[-1])), start)
+    return np.where(reached, finite * _evaluate(cubic, v - start)[0], np.inf)
+
+
+def _cubic(table: Array, start: NDArray[np.int64]) -> tuple[Array, Array, Array, Array]:
+    """Return the Newton coefficients of the cubic through four neighbours, from `start` on."""
+    y0, y1, y2, y3 = np.moveaxis(
+        np.take_along_axis(table, start[..., None] + np.arange(4), axis=-1), -1, 0
+    )
+    return y0, y1 - y0, 0.5 * (y2 - 2.0 * y1 + y0), (y3 - 3.0 * (y2 - y1) - y0) / 6.0
+
+
+def _evaluate(cubic: tuple[Array, Array, Array, Array], t: Array) -> tuple[Array, Array]:
+    """Return value and slope of a cubic at t table steps from its first point."""
+    c0, c1, c2, c3 = cubic
+    value = c0 + t * (c1 + (t - 1.0) * (c2 + (t - 2.0) * c3))
+    slope = c1 + (2.0 * t - 1.0) * c2 + (3.0 * t * t - 6.0 * t + 2.0) * c3
+    return value, slope
