@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, fields
 from pathlib import Path
-from typing import Final
+from typing import Any, Final
 
 import h5py
 import numpy as np
@@ -18,6 +18,10 @@ Array = NDArray[np.float64]
 
 HISTORY: Final = ("steps", "autocorrelation", "rhat", "ess_bulk", "ess_tail")
 """Columns of the history; the last three are NaN where a check did not need them."""
+
+_ARRAYS: Final = ("chain", "ln_prob", "walker_acceptance", "history")
+_INTEGERS: Final = ("steps", "thin", "warm_up", "seed", "index")
+_IMPORTANCE: Final = fields(Importance)
 
 
 @dataclass(frozen=True)
@@ -79,9 +83,9 @@ class EnsembleResult:
     def save(self, path: Path) -> None:
         """Write everything to one HDF5 file, whole or not at all."""
         with replacing(path) as file:
-            for name in ("chain", "ln_prob", "walker_acceptance", "history"):
+            for name in _ARRAYS:
                 file[name] = getattr(self, name)
-            for name in ("steps", "thin", "warm_up", "stopped", "reason", "seed", "index"):
+            for name in (*_INTEGERS, "stopped", "reason"):
                 file.attrs[name] = getattr(self, name)
             file.create_group("acceptance").attrs.update(self.acceptance)
             save_mixture(file.create_group("mixture"), self.mixture)
@@ -100,23 +104,19 @@ class EnsembleResult:
         with h5py.File(path, "r") as file:
             mixture = load_mixture(file["mixture"])
             assert mixture is not None
-            a = file.attrs
+            values: dict[str, Any] = {name: file[name][()] for name in _ARRAYS}
+            values |= {name: int(file.attrs[name]) for name in _INTEGERS}
             return cls(
-                **{n: file[n][()] for n in ("chain", "ln_prob", "walker_acceptance", "history")},
-                **{n: int(a[n]) for n in ("steps", "thin", "warm_up", "seed", "index")},
-                stopped=bool(a["stopped"]),
-                reason=str(a["reason"]),
+                **values,
+                stopped=bool(file.attrs["stopped"]),
+                reason=str(file.attrs["reason"]),
                 acceptance={k: float(v) for k, v in file["acceptance"].attrs.items()},
                 mixture=mixture,
                 importance=_load_importance(file["importance"]),
             )
 
 
-_IMPORTANCE = fields(Importance)
-
-
 def _load_importance(group: h5py.Group) -> Importance:
-    values = {f.name: group.attrs[f.name] for f in _IMPORTANCE}
-    n = int(values.pop("n"))
-    scalars = {k: float(v) if np.ndim(v) == 0 else v for k, v in values.items()}
-    return Importance(n=n, **scalars)
+    values: dict[str, Any] = {f.name: group.attrs[f.name] for f in _IMPORTANCE}
+    values = {k: float(v) if np.ndim(v) == 0 else v for k, v in values.items()}
+    return Importance(**values | {"n": int(values["n"])})

@@ -66,7 +66,7 @@ class RunState:
     step: int
     coords: Array
     ln_prob: Array
-    random_state: tuple[Any, ...]
+    random_state: Any
     thin: int
     mixture: StudentMixture | None
     chain: Array
@@ -113,8 +113,8 @@ def load_mixture(group: h5py.Group) -> StudentMixture | None:
     """Read what `save_mixture` wrote."""
     if "weights" not in group:
         return None
-    arrays = (group[name][()] for name in ("weights", "means", "factors"))
-    return StudentMixture(*arrays, dof=float(group.attrs["dof"]))
+    weights, means, factors = (group[name][()] for name in ("weights", "means", "factors"))
+    return StudentMixture(weights, means, factors, float(group.attrs["dof"]))
 
 
 def save_checkpoint(path: Path, state: RunState, fingerprint: str) -> None:
@@ -194,7 +194,7 @@ def _load_tally(data: h5py.Dataset) -> Tally:
     return tally
 
 
-def _save_random_state(group: h5py.Group, state: tuple[Any, ...]) -> None:
+def _save_random_state(group: h5py.Group, state: Any) -> None:
     kind, key, position, has_gauss, gauss = state
     group.attrs.update(kind=kind, position=position, has_gauss=has_gauss, gauss=gauss)
     group["key"] = key

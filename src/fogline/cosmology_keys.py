@@ -66,7 +66,9 @@ def _no_expansion(block: Mapping[str, Any]) -> Iterator[tuple[str, str]]:
     for step in range(int(_HIGHEST_REDSHIFT) * 10 + 1):
         a = 1.0 + step / 10.0
         if matter * a**3 + (1.0 - matter - dark) * a**2 + dark <= 0.0:
-            what = f"cosmology with Om0 = {matter:g}, Ode0 = {dark:g} has no H(z) at z = {a - 1:.1f}"
+            what = (
+                f"cosmology with Om0 = {matter:g}, Ode0 = {dark:g} has no H(z) at z = {a - 1:.1f}"
+            )
             yield "Ode0" if "Ode0" in block else "Om0", what
             return
 

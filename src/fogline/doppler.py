@@ -103,7 +103,7 @@ def _only_argument(settings: Mapping[str, Any], key: str) -> float:
 
 
 def _hui_rutledge(b_sigma: float) -> tuple[Array, Array]:
-    # u exp(-u) is below 2e-9 at both ends, and a step of 0.4 errs by |Gamma(1 + 2 pi i/0.4)| = 2e-10.
+    # u exp(-u) is below 3e-9 at both ends; a step of 0.4 errs by |Gamma(1 + 2 pi i/0.4)| = 2e-10.
     ln_u = np.linspace(-20.0, 3.6, 60)
     return b_sigma * np.exp(-0.25 * ln_u), _normalised(np.exp(ln_u - np.exp(ln_u)))
 

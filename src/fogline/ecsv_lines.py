@@ -213,12 +213,12 @@ def _read_header(path: str, lines: list[str], faults: list[Fault]) -> Document |
 
 def _header_hint(key: str) -> str:
     near = nearest(key, _HEADER_KEYS)
-    return near if near.startswith("did") else "keys of the data set belong (indented) under 'meta:'"
+    return (
+        near if near.startswith("did") else "keys of the data set belong (indented) under 'meta:'"
+    )
 
 
-def _read_columns(
-    path: str, header: Document, faults: list[Fault]
-) -> tuple[RawColumn, ...] | None:
+def _read_columns(path: str, header: Document, faults: list[Fault]) -> tuple[RawColumn, ...] | None:
     declared = header.value.get("datatype")
     if not isinstance(declared, list) or not declared:
         what = "ECSV header must list the columns under 'datatype'"
@@ -307,10 +307,10 @@ def _read_rows(
 
 def _row_faults(columns: tuple[RawColumn, ...], cells: list[str]) -> list[str]:
     if not cells:
-        return ["quotes of this row do not match; a cell is written \"in double quotes\""]
+        return ['quotes of this row do not match; a cell is written "in double quotes"']
     if len(cells) != len(columns):
         n, m = len(cells), len(columns)
-        return [f"row has {n} cells, must have {m}, one for each of the columns (empty: \"\")"]
+        return [f'row has {n} cells, must have {m}, one for each of the columns (empty: "")']
     return [
         f"{column.name} is '{cell[:60]}', must be {_kind(column)}"
         for column, cell in zip(columns, cells, strict=True)
@@ -320,8 +320,8 @@ def _row_faults(columns: tuple[RawColumn, ...], cells: list[str]) -> list[str]:
 
 def _kind(column: RawColumn) -> str:
     return {"bool": "True or False"}.get(
-        column.datatype, "a number" if column.datatype in FLOATS else f"a whole number "
-        f"({column.datatype})"
+        column.datatype,
+        "a number" if column.datatype in FLOATS else f"a whole number ({column.datatype})",
     )
 
 

@@ -18,12 +18,12 @@ import emcee
 import numpy as np
 from emcee.state import State
 from numpy.typing import NDArray
-from threadpoolctl import threadpool_limits
+from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]
 
 from fogline.chains import EnsembleResult
 from fogline.checkpoint import RunState, load_checkpoint, save_checkpoint
 from fogline.evidence import importance_sample
-from fogline.mixture import StudentMixture, fit_student_mixture
+from fogline.mixture import fit_student_mixture
 from fogline.moves import CountedStretchMove, IndependenceMove, Tally
 from fogline.progress import Progress, Silent
 from fogline.settings import SamplerSettings
@@ -270,7 +270,8 @@ class _Run:
         rng = np.random.default_rng(self.streams[2])
         verdict = ending(state, self.settings)
         assert verdict is not None
-        tallies = state.tallies.values()
+        accepted = np.sum([t.accepted for t in state.tallies.values()], axis=0)
+        n_proposed = sum(t.n_proposed for t in state.tallies.values())
         return EnsembleResult(
             chain=state.chain,
             ln_prob=state.chain_ln_prob,
@@ -278,7 +279,7 @@ class _Run:
             thin=state.thin,
             warm_up=sum(self.settings.warm_up),
             acceptance=_acceptance(state),
-            walker_acceptance=sum(t.accepted for t in tallies) / sum(t.n_proposed for t in tallies),
+            walker_acceptance=accepted / n_proposed,
             mixture=state.mixture,
             history=state.history,
             stopped=verdict.reached,

@@ -103,7 +103,9 @@ class _MetaCheck:
             return key.default
         if key.required_when and not needed and key.name in self.found:
             when = " and ".join(f"{k}: {' | '.join(v)}" for k, v in key.required_when.items())
-            self.fault(f"meta key '{key.name}' has no effect here; allowed only with {when}", key.name)
+            self.fault(
+                f"meta key '{key.name}' has no effect here; allowed only with {when}", key.name
+            )
             return None
         if not _good(key, found):
             hint = self._hint(key, found)
@@ -131,7 +133,8 @@ class _MetaCheck:
         low, high = meta.get("log_nhi_min"), meta.get("log_nhi_max")
         if low is not None and high is not None and not low < high:
             self.fault(
-                f"log_nhi_max is {high:g}, must be greater than log_nhi_min = {low:g}", "log_nhi_max"
+                f"log_nhi_max is {high:g}, must be greater than log_nhi_min = {low:g}",
+                "log_nhi_max",
             )
 
     def cosmology(self, meta: Mapping[str, Any]) -> None:

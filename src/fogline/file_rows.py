@@ -163,8 +163,14 @@ class Rows:
             self._faults.append(Fault(self._raw.path, self.lines[row], what))
 
     def between(
-        self, name: str, minimum: float, maximum: float, *, where: Mask | None = None,
-        closed: bool = False, hint: str = "",
+        self,
+        name: str,
+        minimum: float,
+        maximum: float,
+        *,
+        where: Mask | None = None,
+        closed: bool = False,
+        hint: str = "",
     ) -> Array:
         """Return a column after checking that its numbers are finite and in a range.
 
@@ -279,9 +285,7 @@ def _check_counts(rows: Rows) -> dict[str, Any]:
     }
 
 
-def _check_values(
-    rows: Rows, value: ValueColumn | None, meta: Mapping[str, Any]
-) -> dict[str, Any]:
+def _check_values(rows: Rows, value: ValueColumn | None, meta: Mapping[str, Any]) -> dict[str, Any]:
     limit = _check_limits(rows)
     if value is None:
         name, low, high = "value", -np.inf, np.inf
@@ -305,7 +309,7 @@ def _check_values(
 def _check_limits(rows: Rows) -> NDArray[np.int64]:
     texts = rows.texts("limit")
     bad = np.array([text not in LIMITS for text in texts], dtype=bool)
-    rows.fault_where(bad, "limit", "upper, lower or empty (\"\")")
+    rows.fault_where(bad, "limit", 'upper, lower or empty ("")')
     return np.array([LIMITS.get(text, 0) for text in texts], dtype=np.int64)
 
 

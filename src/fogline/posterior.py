@@ -67,7 +67,9 @@ class Posterior:
         usable = np.abs(theta[:, :n_pivots]).max(axis=1) < LARGEST_LOG_F
         usable &= np.abs(theta[:, n_pivots:]).max(axis=1, initial=0.0) < LARGEST_EXPONENT
         if not usable.all():
-            theta = np.where(usable[:, None], theta, theta[usable.argmax()] if usable.any() else 0.0)
+            theta = np.where(
+                usable[:, None], theta, theta[usable.argmax()] if usable.any() else 0.0
+            )
         with np.errstate(over="ignore", divide="ignore", invalid="ignore"):
             out = self.likelihood.ln_total(self.response.predict(theta))
         out[~usable] = -np.inf

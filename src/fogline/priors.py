@@ -41,7 +41,9 @@ def unit_normal_map(spec: Distribution) -> Callable[[Array], Array]:
         return lambda x: loc + scale * x
     # Each half from its own tail, or quantiles beyond 8σ would round to infinity.
     return lambda x: np.where(
-        x < 0.0, distribution.ppf(ndtr(np.minimum(x, 0.0))), distribution.isf(ndtr(-np.maximum(x, 0.0)))
+        x < 0.0,
+        distribution.ppf(ndtr(np.minimum(x, 0.0))),
+        distribution.isf(ndtr(-np.maximum(x, 0.0))),
     )
 
 

@@ -88,9 +88,7 @@ class Response:
         f = self.distribution.expand(theta) @ self.basis
         np.exp(f, out=f)
         parts = [
-            QUANTITIES[data.quantity].reduce(
-                data, f[:, points] @ block.weights, block.constants
-            )
+            QUANTITIES[data.quantity].reduce(data, f[:, points] @ block.weights, block.constants)
             for data, block, points in zip(self.datasets, self.blocks, self._points, strict=True)
         ]
         return np.concatenate(parts, axis=-1)

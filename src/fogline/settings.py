@@ -100,3 +100,28 @@ class Study:
 
     analyses: Mapping[str, AnalysisSettings]
     raw: Mapping[str, Any] = field(repr=False, default_factory=dict)
+
+
+def analysis_from_plain(plain: Mapping[str, Any]) -> AnalysisSettings:
+    """Return the settings that `dataclasses.asdict` and JSON turned into plain values.
+
+    Parameters
+    ----------
+    plain : mapping
+        As read from JSON: lists where the settings have tuples.
+    """
+    model = {key: _tupled(value) for key, value in plain["model"].items()}
+    model["evolution"] = EvolutionSettings(**{k: _tupled(v) for k, v in model["evolution"].items()})
+    model["prior"] = SplinePriorSettings(**model["prior"])
+    return AnalysisSettings(
+        name=plain["name"],
+        datasets=tuple(plain["datasets"]),
+        cosmology=CosmologySettings(**plain["cosmology"]),
+        model=ModelSettings(**model),
+        sampler=SamplerSettings(**{k: _tupled(v) for k, v in plain["sampler"].items()}),
+        derive=DeriveSettings(**{k: _tupled(v) for k, v in plain["derive"].items()}),
+    )
+
+
+def _tupled(value: Any) -> Any:
+    return tuple(value) if isinstance(value, list) else value

@@ -49,9 +49,12 @@ def bands(values: Array) -> dict[str, Array]:
     -------
     dict of str to ndarray, shape (n_rows,)
     """
-    # Interpolated quantiles would turn a finite and an infinite neighbour into NaN.
-    method = "linear" if np.isfinite(values).all() else "inverted_cdf"
-    quantiles = np.quantile(values, list(BAND_QUANTILES.values()), axis=0, method=method)
+    probabilities = list(BAND_QUANTILES.values())
+    if np.isfinite(values).all():
+        quantiles = np.quantile(values, probabilities, axis=0)
+    else:
+        # Interpolation between a finite and an infinite neighbour would give NaN.
+        quantiles = np.quantile(values, probabilities, axis=0, method="inverted_cdf")
     return dict(zip(BAND_QUANTILES, quantiles, strict=True))
 
 
@@ -139,4 +142,3 @@ def write_whole(path: str | Path, write: Callable[[Path], object]) -> None:
 def read_table(path: str | Path) -> Table:
     """Read an ECSV table."""
     return Table.read(path, format="ascii.ecsv")
-

@@ -77,7 +77,7 @@ def _alternatives(spec: FileSpec, value: ValueColumn) -> Iterator[str]:
     yield "#   z_lo, z_hi instead of z: a redshift bin (weighted by absorption distance)"
     yield "#   err_lo, err_hi instead of err: errors that differ between the sides"
     empty = "" if value.logarithmic else "; err may then be empty"
-    yield "#   limit (string): upper, lower or empty (\"\"); value is then the limit at the"
+    yield '#   limit (string): upper, lower or empty (""); value is then the limit at the'
     yield f"#     confidence in meta{empty}"
     if spec.counts:
         yield f"#   count, path instead of {value.name} and err: absorbers found, and the path searched"

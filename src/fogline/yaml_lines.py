@@ -42,7 +42,9 @@ class Document:
 
     def line(self, place: Place) -> int:
         """Return the line of a place, or of the nearest place around it that the file has."""
-        return next(self.lines[place[:n]] for n in range(len(place), -1, -1) if place[:n] in self.lines)
+        return next(
+            self.lines[place[:n]] for n in range(len(place), -1, -1) if place[:n] in self.lines
+        )
 
 
 def dotted(place: Place) -> str:
@@ -272,9 +274,7 @@ class _Walk:
             yield from ((key, value, True) for key, value, _ in self._pairs(source))
             self._open.discard(id(source))
 
-    def _omap_pairs(
-        self, node: yaml.SequenceNode
-    ) -> Iterator[tuple[yaml.Node, yaml.Node, bool]]:
+    def _omap_pairs(self, node: yaml.SequenceNode) -> Iterator[tuple[yaml.Node, yaml.Node, bool]]:
         for item in node.value:
             if isinstance(item, yaml.MappingNode) and len(item.value) == 1:
                 yield (*item.value[0], False)

@@ -31,8 +31,8 @@ class IncidenceTable:
     def curves(self, draws: Draws) -> Mapping[str, Curve]:
         """Return ℓ(X), then ℓ(z), of every class."""
         classes = {
-            "lls_tau1": (log_nhi_at_tau(1.0), np.inf),
-            "lls_tau2": (log_nhi_at_tau(2.0), np.inf),
+            "lls_tau1": (float(log_nhi_at_tau(1.0)), np.inf),
+            "lls_tau2": (float(log_nhi_at_tau(2.0)), np.inf),
             "sub_dla": (SUB_DLA_LOG_NHI, DLA_LOG_NHI),
             "dla": (DLA_LOG_NHI, np.inf),
         }

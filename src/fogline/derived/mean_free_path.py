@@ -47,7 +47,5 @@ def free_path(draws: Draws, definition: str) -> Array:
     draws : Draws
     definition : {"local", "unit_depth"}
     """
-    data = hypothetical(
-        QUANTITY, draws.z, unit="Mpc", definition=definition, frame="proper"
-    )
+    data = hypothetical(QUANTITY, draws.z, unit="Mpc", definition=definition, frame="proper")
     return build_response([data], draws.setting).predict(draws.theta)

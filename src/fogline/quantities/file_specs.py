@@ -71,7 +71,6 @@ LLS_INCIDENCE: Final = FileSpec(
             "number",
             "lowest optical depth at 912 Å counted",
             minimum=0.0,
-            maximum=1.0e6,
             exclusive=True,
             required=False,
             example=2.0,

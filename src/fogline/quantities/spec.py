@@ -63,7 +63,9 @@ class MetaKey:
         """The allowed values in words, for messages and templates."""
         if self.kind == "choice":
             return " | ".join(self.choices)
-        return "text" if self.kind == "text" else interval(self.minimum, self.maximum, self.exclusive)
+        return (
+            "text" if self.kind == "text" else interval(self.minimum, self.maximum, self.exclusive)
+        )
 
 
 def interval(minimum: float, maximum: float, exclusive: bool = False) -> str:

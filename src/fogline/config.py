@@ -1,0 +1,288 @@
+"""Configs: read, validated completely, and turned into a `Study` of frozen settings.
+
+A config states blocks (cosmology, model, sampler, derive) and analyses; an analysis overrides
+blocks key by key and may inherit from another by ``base``. The schema says which keys there are
+(``config/README.md`` is made from it); everything wrong is found at once and reported with its
+line. The workflow imports this module at every start: it pulls in yaml and jsonschema only.
+"""
+
+from __future__ import annotations
+
+import os
+import re
+from collections.abc import Callable, Mapping
+from typing import Any, Final
+
+from fogline.config_checks import block_faults, distribution_faults, redshift_grid
+from fogline.config_datasets import Pattern, find_files
+from fogline.config_layers import Layers
+from fogline.config_schema import (
+    MISSING,
+    config_reference,
+    missing_faults,
+    schema,
+    schema_faults,
+    with_defaults,
+)
+from fogline.faults import Fault, InputError, nearest
+from fogline.settings import (
+    AnalysisSettings,
+    CosmologySettings,
+    DeriveSettings,
+    EvolutionSettings,
+    ModelSettings,
+    SamplerSettings,
+    SplinePriorSettings,
+    Study,
+)
+from fogline.yaml_lines import Place, read_yaml
+
+_NAME: Final = re.compile(r"[A-Za-z0-9_-]+")
+_ANCHOR_NEAR: Final = 20.3  # where the DLA counts of most studies begin and f is known best
+
+LineOf = Callable[[Place], int]
+
+
+def load_config(path: str | os.PathLike[str]) -> Study:
+    """Return the study that a config file states.
+
+    Parameters
+    ----------
+    path : path-like
+        YAML file.
+
+    Returns
+    -------
+    Study
+
+    Raises
+    ------
+    InputError
+        With every fault of the file.
+    """
+    document = read_yaml(path)
+    return parse_config(document.value, os.fspath(path), document.line)
+
+
+def parse_config(
+    config: Mapping[str, Any], path: str = "config", line_of: LineOf = lambda place: 1
+) -> Study:
+    """Return the study that a config states.
+
+    Parameters
+    ----------
+    config : mapping
+        What the config's YAML holds.
+    path : str
+        The file, for the faults.
+    line_of : callable
+        Line of the file at which a place (a tuple of keys) stands.
+
+    Returns
+    -------
+    Study
+
+    Raises
+    ------
+    InputError
+        With every fault.
+    """
+    faults = _Faults(path, line_of)
+    if not isinstance(config, Mapping) or not config:
+        faults.add((), "config must be a mapping with the keys cosmology, model, analyses")
+        raise InputError(faults.found)
+    config = dict(config)
+    faults.extend(schema_faults(config))
+    faults.extend(_missing_at_top(config))
+    blocks = config.get("analyses")
+    blocks = blocks if isinstance(blocks, Mapping) else {}
+    chains = {name: _chain(name, blocks, faults) for name in blocks}
+    analyses = {
+        name: _analysis(name, chain, config, faults) for name, chain in chains.items() if chain
+    }
+    if faults.found:
+        raise InputError(faults.found)
+    return Study({name: made for name, made in analyses.items() if made is not None}, config)
+
+
+def check_distributions(
+    study: Study, path: str = "config", line_of: LineOf = lambda place: 1
+) -> list[Fault]:
+    """Return what is wrong with the distributions that a study names; imports scipy.
+
+    Parameters
+    ----------
+    study : Study
+        From `load_config` or `parse_config`.
+    path, line_of
+        As for `parse_config`.
+
+    Returns
+    -------
+    list of Fault
+    """
+    faults = _Faults(path, line_of)
+    for name in study.analyses:
+        chain = _chain(name, study.raw["analyses"], faults)
+        layers = _layers(chain, study.raw)
+        for place, what in distribution_faults(study, name):
+            faults.add(layers.origin(place), what)
+    return sorted(set(faults.found))
+
+
+class _Faults:
+    """Gathers faults by their place in the config."""
+
+    def __init__(self, path: str, line_of: LineOf) -> None:
+        self.found: list[Fault] = []
+        self._path = path
+        self._line_of = line_of
+
+    def add(self, place: Place, what: str) -> None:
+        self.found.append(Fault(self._path, self._line_of(place), what))
+
+    def extend(self, placed: Any) -> None:
+        for place, what in placed:
+            self.add(place, what)
+
+
+def _missing_at_top(config: Mapping[str, Any]) -> list[tuple[Place, str]]:
+    """Return the fault of a config without analyses; other blocks are missed by analyses."""
+    if "analyses" in config:
+        return []
+    return [((), "lacks 'analyses' (the fits by name)")]
+
+
+def _chain(name: str, blocks: Mapping[str, Any], faults: _Faults) -> tuple[str, ...]:
+    """Return the analyses that one is made of, itself last; empty where that cannot be told."""
+    if not _NAME.fullmatch(str(name)):
+        what = f"analysis is named '{name}', must be letters, digits, '_' and '-'"
+        faults.add(("analyses", name), f"{what} (it names outputs)")
+        return ()
+    chain = [name]
+    while isinstance(blocks[chain[0]], Mapping) and "base" in blocks[chain[0]]:
+        place: Place = ("analyses", chain[0], "base")
+        base = blocks[chain[0]]["base"]
+        if not isinstance(base, str):
+            return ()
+        if base not in blocks:
+            faults.add(place, f"base '{base}' is no analysis; {nearest(base, map(str, blocks))}")
+            return ()
+        if base in chain:
+            faults.add(place, f"base '{base}' makes a circle: {' <- '.join([base, *chain])}")
+            return ()
+        chain.insert(0, base)
+    return tuple(chain) if isinstance(blocks[chain[0]], Mapping) else ()
+
+
+def _layers(chain: tuple[str, ...], config: Mapping[str, Any]) -> Layers:
+    own = [(("analyses", name), config["analyses"][name]) for name in chain]
+    return Layers((((), config), *own))
+
+
+def _analysis(
+    name: str, chain: tuple[str, ...], config: Mapping[str, Any], faults: _Faults
+) -> AnalysisSettings | None:
+    layers = _layers(chain, config)
+    files = find_files(*_patterns(name, chain, config, faults), faults.add)
+    blocks = layers.merged()
+    if faults.found and any(True for _ in schema_faults(blocks)):
+        return None  # said already, at the place where it stands
+    required = ("cosmology", "model")
+    missing = [
+        ((), f"lacks '{key}' for analysis '{name}'") for key in required if key not in blocks
+    ]
+    for key in blocks:
+        missing.extend(missing_faults(schema()["properties"][key], blocks[key], (key,)))
+    if not missing:
+        blocks = _with_defaults(blocks)
+        missing.extend(block_faults(blocks, name))
+    for place, what in missing:
+        faults.add(layers.origin(place) if place else (), what)
+    return None if missing else _settings(name, files, blocks)
+
+
+def _with_defaults(blocks: Mapping[str, Any]) -> dict[str, Any]:
+    keys = schema()["properties"]
+    return {
+        key: with_defaults(keys[key], blocks.get(key, MISSING)) for key in keys if key != "analyses"
+    }
+
+
+def _patterns(
+    name: str, chain: tuple[str, ...], config: Mapping[str, Any], faults: _Faults
+) -> tuple[list[Pattern], list[Pattern]]:
+    """Return the patterns of the data sets of an analysis, and those that it leaves out."""
+    datasets: list[Pattern] = []
+    exclude: list[Pattern] = []
+    for link in chain:
+        block, place = config["analyses"][link], ("analyses", link)
+        if "datasets" in block:  # a new choice of files starts from nothing left out
+            datasets, exclude = _listed(block, "datasets", place), []
+        exclude = [*exclude, *_listed(block, "exclude", place)]
+    if not any("datasets" in config["analyses"][link] for link in chain):
+        what = f"analysis '{name}' lacks 'datasets' (constraint files), or a 'base' that has them"
+        faults.add(("analyses", name), what)
+    return datasets, exclude
+
+
+def _listed(block: Mapping[str, Any], key: str, place: Place) -> list[Pattern]:
+    found = block.get(key, [])
+    items = found if isinstance(found, list) else []
+    return [
+        ((*place, key, i), item) for i, item in enumerate(items) if isinstance(item, str) and item
+    ]
+
+
+def _settings(name: str, files: tuple[str, ...], blocks: Mapping[str, Any]) -> AnalysisSettings:
+    cosmology, derive, sampler = blocks["cosmology"], blocks["derive"], blocks["sampler"]
+    dark = cosmology["Ode0"]
+    whole = ("walkers", "ensembles", "seed", "target_ess", "max_steps", "thin")
+    return AnalysisSettings(
+        name=name,
+        datasets=files,
+        cosmology=CosmologySettings(
+            float(cosmology["H0"]), float(cosmology["Om0"]), None if dark is None else float(dark)
+        ),
+        model=_model(blocks["model"]),
+        sampler=SamplerSettings(
+            **{key: int(sampler[key]) for key in whole},
+            max_rhat=float(sampler["max_rhat"]),
+            warm_up=tuple(int(n) for n in sampler["warm_up"]),
+            components=tuple(int(n) for n in sampler["components"]),
+            independence_share=float(sampler["independence_share"]),
+        ),
+        derive=DeriveSettings(
+            redshifts=redshift_grid(derive["redshifts"]),
+            column_redshifts=redshift_grid(derive["column_redshifts"]),
+            draws=int(derive["draws"]),
+        ),
+    )
+
+
+def _model(model: Mapping[str, Any]) -> ModelSettings:
+    pivots = tuple(float(pivot) for pivot in model["pivots"])
+    evolution, anchor, slope = model["evolution"], model["prior"]["anchor"], model["prior"]["slope"]
+    n = len(evolution["pivots"])
+    priors = (
+        evolution["prior"] if isinstance(evolution["prior"], list) else [evolution["prior"]] * n
+    )
+    at = anchor.get("log_nhi")
+    at = min(pivots, key=lambda pivot: abs(pivot - _ANCHOR_NEAR)) if at is None else float(at)
+    walk = slope["kind"] == "walk"
+    return ModelSettings(
+        reference_redshift=float(model["reference_redshift"]),
+        pivots=pivots,
+        evolution=EvolutionSettings(tuple(map(float, evolution["pivots"])), tuple(priors)),
+        prior=SplinePriorSettings(
+            anchor_log_nhi=at,
+            anchor={key: item for key, item in anchor.items() if key != "log_nhi"},
+            slope_kind=slope["kind"],
+            first_slope=slope["first"],
+            slope_step=slope["step"] if walk else None,
+        ),
+        doppler=model["doppler"],
+    )
+
+
+__all__ = ["check_distributions", "config_reference", "load_config", "parse_config"]

@@ -1,0 +1,53 @@
+"""Predictions and derived tables at one given parameter vector."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import numpy as np
+from astropy.table import Table
+from numpy.typing import NDArray
+
+from fogline.datasets import DataSet
+from fogline.derived import Draws, write_derived
+from fogline.predictive import row_table
+from fogline.response_file import build_fit, setting_of
+from fogline.settings import AnalysisSettings
+
+Array = NDArray[np.float64]
+
+
+def predict_table(analysis: AnalysisSettings, datasets: list[DataSet], point: Array) -> Table:
+    """Return the prediction of every row, in the data's own convention.
+
+    Parameters
+    ----------
+    analysis : AnalysisSettings
+    datasets : list of DataSet
+    point : ndarray, shape (n_parameters,)
+        log10 f at the pivots at the reference redshift, then the exponents.
+
+    Returns
+    -------
+    astropy.table.Table
+        Columns ``dataset row quantity z observed predicted``; meta ``ln_likelihood``.
+    """
+    fit = build_fit(analysis, datasets)
+    table = row_table(fit.response.datasets)
+    table["predicted"] = fit.response.predict(point)
+    table.meta["ln_likelihood"] = float(fit.posterior.ln_likelihood(point[None])[0])
+    table.meta.update(fit.table_meta())
+    return table
+
+
+def write_derived_at(analysis: AnalysisSettings, point: Array, directory: str | Path) -> None:
+    """Write the derived tables at given parameters, without bands.
+
+    Parameters
+    ----------
+    analysis : AnalysisSettings
+    point : ndarray, shape (n_parameters,)
+    directory : path-like
+    """
+    draws = Draws(point[None], setting_of(analysis), analysis.derive)
+    write_derived(draws, directory, with_bands=False, analysis=analysis.name)
