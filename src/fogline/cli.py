@@ -13,6 +13,7 @@ from collections.abc import Sequence
 from importlib import metadata
 
 from fogline.commands import check, derive, predict, template
+from fogline.commands.selection import UsageError
 from fogline.faults import InputError
 
 
@@ -35,6 +36,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
         sys.stdout.flush()
     except InputError as error:
         print(error, file=sys.stderr)
+        return 2
+    except UsageError as error:
+        print(f"fogline: {error}", file=sys.stderr)
         return 2
     except BrokenPipeError:
         # The reader (head, less) has gone; what python still flushes at exit must go nowhere.

@@ -8,7 +8,7 @@ from fogline.atomic import log_nhi_at_tau
 from fogline.datasets import DataSet
 from fogline.ecsv_lines import split_ecsv
 from fogline.faults import Fault, InputError
-from fogline.yaml_lines import read_text
+from fogline.text_files import read_text
 
 ColumnRange = tuple[float | None, float | None]
 

@@ -13,32 +13,23 @@ import re
 from collections.abc import Callable, Mapping
 from typing import Any, Final
 
-from fogline.config_checks import block_faults, distribution_faults, redshift_grid
+from fogline.config_checks import block_faults, distribution_faults
 from fogline.config_datasets import Pattern, find_files
 from fogline.config_layers import Layers
 from fogline.config_schema import (
     MISSING,
-    config_reference,
+    PlacedFault,
     missing_faults,
     schema,
     schema_faults,
     with_defaults,
 )
+from fogline.config_settings import analysis_settings
 from fogline.faults import Fault, InputError, nearest
-from fogline.settings import (
-    AnalysisSettings,
-    CosmologySettings,
-    DeriveSettings,
-    EvolutionSettings,
-    ModelSettings,
-    SamplerSettings,
-    SplinePriorSettings,
-    Study,
-)
+from fogline.settings import AnalysisSettings, Study
 from fogline.yaml_lines import Place, read_yaml
 
 _NAME: Final = re.compile(r"[A-Za-z0-9_-]+")
-_ANCHOR_NEAR: Final = 20.3  # where the DLA counts of most studies begin and f is known best
 
 LineOf = Callable[[Place], int]
 
@@ -189,7 +180,7 @@ def _analysis(
     if faults.found and any(True for _ in schema_faults(blocks)):
         return None  # said already, at the place where it stands
     required = ("cosmology", "model")
-    missing = [
+    missing: list[PlacedFault] = [
         ((), f"lacks '{key}' for analysis '{name}'") for key in required if key not in blocks
     ]
     for key in blocks:
@@ -199,7 +190,7 @@ def _analysis(
         missing.extend(block_faults(blocks, name))
     for place, what in missing:
         faults.add(layers.origin(place) if place else (), what)
-    return None if missing else _settings(name, files, blocks)
+    return None if missing else analysis_settings(name, files, blocks)
 
 
 def _with_defaults(blocks: Mapping[str, Any]) -> dict[str, Any]:
@@ -228,61 +219,8 @@ def _patterns(
 
 def _listed(block: Mapping[str, Any], key: str, place: Place) -> list[Pattern]:
     found = block.get(key, [])
-    items = found if isinstance(found, list) else []
-    return [
-        ((*place, key, i), item) for i, item in enumerate(items) if isinstance(item, str) and item
-    ]
+    items = enumerate(found if isinstance(found, list) else [])
+    return [((*place, key, i), item) for i, item in items if item and isinstance(item, str)]
 
 
-def _settings(name: str, files: tuple[str, ...], blocks: Mapping[str, Any]) -> AnalysisSettings:
-    cosmology, derive, sampler = blocks["cosmology"], blocks["derive"], blocks["sampler"]
-    dark = cosmology["Ode0"]
-    whole = ("walkers", "ensembles", "seed", "target_ess", "max_steps", "thin")
-    return AnalysisSettings(
-        name=name,
-        datasets=files,
-        cosmology=CosmologySettings(
-            float(cosmology["H0"]), float(cosmology["Om0"]), None if dark is None else float(dark)
-        ),
-        model=_model(blocks["model"]),
-        sampler=SamplerSettings(
-            **{key: int(sampler[key]) for key in whole},
-            max_rhat=float(sampler["max_rhat"]),
-            warm_up=tuple(int(n) for n in sampler["warm_up"]),
-            components=tuple(int(n) for n in sampler["components"]),
-            independence_share=float(sampler["independence_share"]),
-        ),
-        derive=DeriveSettings(
-            redshifts=redshift_grid(derive["redshifts"]),
-            column_redshifts=redshift_grid(derive["column_redshifts"]),
-            draws=int(derive["draws"]),
-        ),
-    )
-
-
-def _model(model: Mapping[str, Any]) -> ModelSettings:
-    pivots = tuple(float(pivot) for pivot in model["pivots"])
-    evolution, anchor, slope = model["evolution"], model["prior"]["anchor"], model["prior"]["slope"]
-    n = len(evolution["pivots"])
-    priors = (
-        evolution["prior"] if isinstance(evolution["prior"], list) else [evolution["prior"]] * n
-    )
-    at = anchor.get("log_nhi")
-    at = min(pivots, key=lambda pivot: abs(pivot - _ANCHOR_NEAR)) if at is None else float(at)
-    walk = slope["kind"] == "walk"
-    return ModelSettings(
-        reference_redshift=float(model["reference_redshift"]),
-        pivots=pivots,
-        evolution=EvolutionSettings(tuple(map(float, evolution["pivots"])), tuple(priors)),
-        prior=SplinePriorSettings(
-            anchor_log_nhi=at,
-            anchor={key: item for key, item in anchor.items() if key != "log_nhi"},
-            slope_kind=slope["kind"],
-            first_slope=slope["first"],
-            slope_step=slope["step"] if walk else None,
-        ),
-        doppler=model["doppler"],
-    )
-
-
-__all__ = ["check_distributions", "config_reference", "load_config", "parse_config"]
+__all__ = ["check_distributions", "load_config", "parse_config"]

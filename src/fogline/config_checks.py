@@ -103,25 +103,6 @@ def _derive_faults(derive: Mapping[str, Any]) -> Iterator[PlacedFault]:
     yield from _increasing(derive["column_redshifts"], ("derive", "column_redshifts"))
 
 
-def redshift_grid(grid: Mapping[str, float] | Sequence[float]) -> tuple[float, ...]:
-    """Return the redshifts that ``{start, stop, step}`` or a list names.
-
-    Parameters
-    ----------
-    grid : mapping or sequence
-        As in the config.
-
-    Returns
-    -------
-    tuple of float
-        With `stop` where a step ends there.
-    """
-    if not isinstance(grid, Mapping):
-        return tuple(float(z) for z in grid)
-    n_steps = int((grid["stop"] - grid["start"]) / grid["step"] + 1e-9)
-    return tuple(round(grid["start"] + i * grid["step"], 10) for i in range(n_steps + 1))
-
-
 def distribution_faults(study: Study, name: str) -> Iterator[PlacedFault]:
     """Give what is wrong with the distributions of one analysis.
 

@@ -1,4 +1,4 @@
-"""The blocks of a config laid over each other: the top, then a chain of ``base``s, then an analysis.
+"""Blocks of a config laid over each other: the top, a chain of ``base``s, the analysis itself.
 
 Mappings merge key by key, everything else replaces. A mapping that states ``dist`` replaces a
 distribution as a whole, since the arguments of one distribution mean nothing to another.

@@ -1,4 +1,4 @@
-"""The config's schema (``schemas/config.yaml``): validation, defaults, and the reference made of it.
+"""The config's schema (``schemas/config.yaml``): validation, defaults, reference.
 
 jsonschema finds what is wrong; the messages are made here, since its own dump the schema. Keys
 that an analysis may inherit are not ``required`` in the sense of JSON schema but ``x-required``:
@@ -11,7 +11,7 @@ import functools
 import math
 from collections.abc import Iterator, Mapping
 from importlib import resources
-from typing import Any, Final
+from typing import Any, Final, cast
 
 import yaml
 from jsonschema import Draft202012Validator, ValidationError
@@ -24,7 +24,7 @@ Schema = Mapping[str, Any]
 PlacedFault = tuple[Place, str]
 """Where in the config something is wrong, and what."""
 
-MISSING: Final = object()
+MISSING: Final[Any] = object()
 
 
 @functools.cache
@@ -66,35 +66,36 @@ def schema_faults(config: Mapping[str, Any]) -> Iterator[PlacedFault]:
 
 def _explain(error: ValidationError) -> Iterator[PlacedFault]:
     place: Place = tuple(error.absolute_path)
+    node: Any = error.schema
     if error.validator == "additionalProperties":
         yield from _unknown_keys(error, place)
     elif error.validator == "anyOf":
         yield from _explain_branch(error, place)
     else:
-        allowed = expectation(error.schema)
+        name, allowed = dotted(place) or "config", expectation(node)
         hint = text_number_hint(error.instance)
         if error.validator == "enum":
-            near = nearest(str(error.instance), error.schema["enum"])
+            near = nearest(str(error.instance), node["enum"])
             hint = f"; {near}" if near.startswith("did") else ""
-        yield (
-            place,
-            f"{dotted(place) or 'config'} is {shown(error.instance)}, must be {allowed}{hint}",
-        )
+        yield place, f"{name} is {shown(error.instance)}, must be {allowed}{hint}"
 
 
 def _unknown_keys(error: ValidationError, place: Place) -> Iterator[PlacedFault]:
-    known = list(error.schema.get("properties", {}))
-    for key in error.instance:
+    node, found = cast(Schema, error.schema), cast(Mapping[str, Any], error.instance)
+    known = list(node.get("properties", {}))
+    for key in found:
         if key not in known:
             where = dotted((*place, str(key)))
             yield (*place, key), f"unknown key '{where}'; {nearest(str(key), known)}"
 
 
 def _explain_branch(error: ValidationError, place: Place) -> Iterator[PlacedFault]:
-    kind = {list: "array", dict: "object"}.get(type(error.instance))
-    branches = [resolve(branch)["type"] for branch in error.schema["anyOf"]]
+    node: Any = error.schema
+    kind = "array" if isinstance(error.instance, list) else "object"
+    kind = kind if isinstance(error.instance, list | Mapping) else "scalar"
+    branches = [resolve(branch)["type"] for branch in node["anyOf"]]
     if kind not in branches:
-        what = f"{dotted(place)} is {shown(error.instance)}, must be {expectation(error.schema)}"
+        what = f"{dotted(place)} is {shown(error.instance)}, must be {expectation(node)}"
         yield place, what + text_number_hint(error.instance)
         return
     for inner in error.context or ():
@@ -105,9 +106,8 @@ def _explain_branch(error: ValidationError, place: Place) -> Iterator[PlacedFaul
 def _not_finite(value: Any, place: Place) -> Iterator[PlacedFault]:
     if isinstance(value, float) and not math.isfinite(value):
         yield place, f"{dotted(place)} is {value}, must be finite"
-    items = value.items() if isinstance(value, Mapping) else ()
-    items = enumerate(value) if isinstance(value, list) else items
-    for key, item in items:
+    items: Any = value.items() if isinstance(value, Mapping) else ()
+    for key, item in enumerate(value) if isinstance(value, list) else items:
         yield from _not_finite(item, (*place, key))
 
 
@@ -184,43 +184,9 @@ def with_defaults(node: Schema, value: Any) -> Any:
     node = resolve(node, value)
     if "properties" not in node or not (value is MISSING or isinstance(value, Mapping)):
         return node.get("default", MISSING) if value is MISSING else value
-    given = {} if value is MISSING else value
+    given: Mapping[str, Any] = {} if value is MISSING else value
     filled = {
         key: with_defaults(child, given.get(key, MISSING))
         for key, child in node["properties"].items()
     }
     return {**given, **{key: item for key, item in filled.items() if item is not MISSING}}
-
-
-def config_reference() -> str:
-    """Return a Markdown reference of every key of the config, made from the schema."""
-    lines = ["| key | holds | allowed | default |", "|---|---|---|---|"]
-    for place, node, required in _keys(schema(), ()):
-        default = _default_text(node, required)
-        what = str(node.get("description", ""))
-        cells = [f"`{dotted(place)}`", what, expectation(node), default]
-        lines.append(f"| {' | '.join(cell.replace('|', chr(92) + '|') for cell in cells)} |")
-    return "\n".join(lines) + "\n"
-
-
-def _default_text(node: Schema, required: bool) -> str:
-    if "default" in node:
-        text = yaml.safe_dump(node["default"], default_flow_style=True, width=1000)
-        return f"`{text.removesuffix('...' + chr(10)).strip()}`"
-    return "required" if required else ""
-
-
-def _keys(node: Schema, place: Place) -> Iterator[tuple[Place, Schema, bool]]:
-    """Give every key of the config; the blocks of an analysis only once, at the top."""
-    required = node.get("x-required", ())
-    for key, child in node.get("properties", {}).items():
-        inner = resolve(child)
-        yield (*place, key), inner, key in required
-        if place[:1] == ("analyses",) and key in schema()["properties"]:
-            continue
-        if child.get("$ref") != "#/$defs/distribution":
-            yield from _keys(resolve(child, {}), (*place, key))
-        if isinstance(inner.get("additionalProperties"), Mapping) and key == "analyses":
-            named = (*place, key, "NAME")
-            yield named, resolve(inner["additionalProperties"]), True
-            yield from _keys(resolve(inner["additionalProperties"]), named)

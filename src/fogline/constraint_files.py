@@ -18,11 +18,12 @@ from fogline.cosmology import Cosmology
 from fogline.datasets import DataSet
 from fogline.ecsv_lines import RawTable, read_table, split_ecsv
 from fogline.faults import Fault, InputError
+from fogline.file_columns import are_counts, check_columns
 from fogline.file_meta import check_meta, find_spec
-from fogline.file_rows import Rows, are_counts, check_columns, check_rows
+from fogline.file_rows import Rows, check_rows
 from fogline.file_units import check_units
 from fogline.quantities.spec import FileSpec, ValueColumn
-from fogline.yaml_lines import read_text
+from fogline.text_files import read_text
 
 _STEM: Final = re.compile(r"[A-Za-z0-9_-]+")
 
@@ -56,8 +57,9 @@ def read_constraint_file(path: PathLike) -> DataSet:
     faults.extend(_stem_faults(path))
     raw = split_ecsv(path, text, faults)
     dataset = None if raw is None else _validate(raw, faults)
-    if faults or dataset is None:
+    if faults:
         raise InputError(faults)
+    assert dataset is not None  # whatever keeps a data set from being made is a fault
     return dataset
 
 
@@ -79,10 +81,10 @@ def read_constraint_files(paths: Iterable[PathLike]) -> list[DataSet]:
     InputError
         With every fault of all files, and where two of them have the same stem.
     """
-    paths = [os.fspath(path) for path in paths]
+    names = [os.fspath(path) for path in paths]
     datasets: list[DataSet] = []
-    faults = duplicate_stems(paths)
-    for path in paths:
+    faults = duplicate_stems(names)
+    for path in names:
         try:
             datasets.append(read_constraint_file(path))
         except InputError as error:

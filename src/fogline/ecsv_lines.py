@@ -8,7 +8,6 @@ the rest of the file is still validated.
 
 from __future__ import annotations
 
-import csv
 import re
 import textwrap
 import warnings
@@ -21,49 +20,13 @@ from astropy.cosmology import units as cosmology_units
 from astropy.io import ascii as astropy_ascii
 from astropy.table import Table
 
+from fogline.ecsv_cells import FLOATS, INTEGERS, RawColumn, RawRow, read_rows, split_cells
 from fogline.faults import Fault, nearest
-from fogline.yaml_lines import Document, Place, parse_yaml
+from fogline.yaml_lines import Document, parse_yaml
 
 _FIRST_LINE: Final = re.compile(r"\s*#\s*%ECSV\s+\d+\.\d+(\.\d+)?\s*$")
 _COMMENT: Final = re.compile(r"\s*#")
-_INTEGER: Final = re.compile(r"[+-]?\d{1,18}")
-_FLOAT: Final = re.compile(r"[+-]?((\d+\.?\d*|\.\d+)([eE][+-]?\d{1,3})?|inf|nan)", re.IGNORECASE)
 _HEADER_KEYS: Final = ("datatype", "delimiter", "meta", "schema")
-
-FLOATS: Final = ("float16", "float32", "float64")
-INTEGERS: Final = ("int8", "int16", "int32", "int64", "uint8", "uint16", "uint32", "uint64")
-
-
-@dataclass(frozen=True)
-class RawColumn:
-    """One column as the header declares it.
-
-    Parameters
-    ----------
-    name, datatype, unit : str
-        As written; `unit` is empty where none is stated.
-    line : int
-        Line of the declaration.
-    """
-
-    name: str
-    datatype: str
-    unit: str
-    line: int
-
-    @property
-    def numeric(self) -> bool:
-        """Whether the column is declared to hold numbers."""
-        return self.datatype in FLOATS + INTEGERS
-
-
-@dataclass(frozen=True)
-class RawRow:
-    """One row as text, with its line."""
-
-    line: int
-    text: str
-    cells: tuple[str, ...]
 
 
 @dataclass(frozen=True)
@@ -141,7 +104,11 @@ def split_ecsv(path: str, text: str, faults: list[Fault]) -> RawTable | None:
     delimiter = header.value.get("delimiter", " ")
     if columns is None or not _names_agree(path, columns, body, delimiter, n_header, faults):
         return RawTable(path, header, (), n_header, (), 0, ())
-    rows = _read_rows(path, columns, body[1:], delimiter, faults)
+    if not body[1:]:
+        faults.append(
+            Fault(path, body[0][0], "no rows below the column names; must be at least one")
+        )
+    rows = read_rows(path, columns, body[1:], delimiter, faults)
     head = tuple([line for line in lines[:n_header] if line.strip()] + [body[0][1]])
     left_out = len(body) - 1 - len(rows)
     return RawTable(path, header, columns, body[0][0], rows, left_out, head)
@@ -162,7 +129,7 @@ def read_table(raw: RawTable, faults: list[Fault]) -> Table | None:
     astropy.table.Table or None
         None where there is nothing to read.
     """
-    if not raw.rows:
+    if not raw.rows or "__serialized_columns__" in raw.meta:  # which would make other columns
         return None
     lines = [*raw.head, *(row.text for row in raw.rows)]
     try:
@@ -187,7 +154,7 @@ def _header_length(path: str, lines: list[str], faults: list[Fault]) -> int:
         faults.append(Fault(path, first + 1, what))
         return 0
     ends = (n for n, line in enumerate(lines) if line.strip() and not _COMMENT.match(line))
-    return next(ends, len(lines))
+    return next(ends, len("\n".join(lines).rstrip().split("\n")))
 
 
 def _read_header(path: str, lines: list[str], faults: list[Fault]) -> Document | None:
@@ -265,7 +232,7 @@ def _names_agree(
         faults.append(Fault(path, n_header, what))
         return False
     line, text = body[0]
-    found = _cells(text, delimiter)
+    found = split_cells(text, delimiter)
     if found != declared:
         what = (
             f"column names are {_join(found)}, but the header declares {_join(declared)}; "
@@ -277,67 +244,3 @@ def _names_agree(
 
 def _join(words: list[str]) -> str:
     return f"'{' '.join(words)}'"
-
-
-def _cells(text: str, delimiter: str) -> list[str]:
-    """Split one row as astropy does; raises csv.Error on an open quote."""
-    reader = csv.reader([text], delimiter=delimiter, skipinitialspace=True, strict=True)
-    try:
-        return [cell.strip(" \t") for cell in next(reader, [])]
-    except csv.Error:
-        return []
-
-
-def _read_rows(
-    path: str,
-    columns: tuple[RawColumn, ...],
-    body: list[tuple[int, str]],
-    delimiter: str,
-    faults: list[Fault],
-) -> tuple[RawRow, ...]:
-    rows = []
-    for line, text in body:
-        cells = _cells(text, delimiter)
-        found = _row_faults(columns, cells)
-        faults.extend(Fault(path, line, what) for what in found)
-        if not found:
-            rows.append(RawRow(line, text, tuple(cells)))
-    return tuple(rows)
-
-
-def _row_faults(columns: tuple[RawColumn, ...], cells: list[str]) -> list[str]:
-    if not cells:
-        return ['quotes of this row do not match; a cell is written "in double quotes"']
-    if len(cells) != len(columns):
-        n, m = len(cells), len(columns)
-        return [f'row has {n} cells, must have {m}, one for each of the columns (empty: "")']
-    return [
-        f"{column.name} is '{cell[:60]}', must be {_kind(column)}"
-        for column, cell in zip(columns, cells, strict=True)
-        if cell and not _readable(column, cell)
-    ]
-
-
-def _kind(column: RawColumn) -> str:
-    return {"bool": "True or False"}.get(
-        column.datatype,
-        "a number" if column.datatype in FLOATS else f"a whole number ({column.datatype})",
-    )
-
-
-def _readable(column: RawColumn, cell: str) -> bool:
-    if column.datatype in FLOATS:
-        return bool(_FLOAT.fullmatch(cell))
-    if column.datatype in INTEGERS:
-        return bool(_INTEGER.fullmatch(cell)) and _fits(column.datatype, int(cell))
-    return column.datatype != "bool" or cell in ("True", "False")
-
-
-def _fits(datatype: str, number: int) -> bool:
-    bits = int(datatype.removeprefix("u").removeprefix("int"))
-    if datatype.startswith("u"):
-        return 0 <= number < 2**bits
-    return -(2 ** (bits - 1)) <= number < 2 ** (bits - 1)
-
-
-__all__ = ["Place", "RawColumn", "RawRow", "RawTable", "read_table", "split_ecsv"]

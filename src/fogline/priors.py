@@ -14,6 +14,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -25,6 +26,9 @@ from fogline.settings import Distribution, ModelSettings
 
 Array = NDArray[np.float64]
 Quantile = Callable[[Array, Array], Array]
+
+FARTHEST = 30.0
+"""Coordinates beyond this many σ of the prior are taken as this many."""
 
 
 def unit_normal_map(spec: Distribution) -> Callable[[Array], Array]:
@@ -80,6 +84,16 @@ class Prior:
         """Number of coordinates x, equal to the number of parameters."""
         return len(self.model.pivots) + len(self.model.evolution.pivots)
 
+    @property
+    def coordinate_names(self) -> tuple[str, ...]:
+        """Names of the coordinates x, in order: anchor, slope of every interval, exponents."""
+        model = self.model
+        return (
+            f"anchor[{model.prior.anchor_log_nhi}]",
+            *(f"slope[{lo}-{hi}]" for lo, hi in pairwise(model.pivots)),
+            *(f"evolution[{pivot}]" for pivot in model.evolution.pivots),
+        )
+
     @cached_property
     def _anchor_index(self) -> int:
         return self.model.pivots.index(self.model.prior.anchor_log_nhi)
@@ -112,6 +126,8 @@ class Prior:
             log10 f at every pivot (decreasing), then the exponents.
         """
         n_pivots = len(self.model.pivots)
+        # Proposals with heavy tails reach beyond 38σ, where Φ underflows; no sample ever does.
+        x = np.clip(x, -FARTHEST, FARTHEST)
         theta = np.empty_like(x)
         theta[:, :n_pivots] = self._pivot_values(x[:, :n_pivots])
         for column, quantile in enumerate(self._exponent_maps, start=n_pivots):

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import json
 from collections.abc import Mapping
-from dataclasses import asdict, dataclass, fields
+from dataclasses import asdict, dataclass, fields, replace
 from pathlib import Path
 from typing import Any
 
@@ -138,16 +138,26 @@ def _plain_cosmology(cosmology: Cosmology | None) -> dict[str, Any] | None:
     return {"H0": cosmology.H0, "Om0": cosmology.Om0, "Ode0": cosmology.Ode0}
 
 
-def load_fit(path: str | Path) -> Fit:
-    """Read a fit that `save_fit` wrote."""
+def load_fit(path: str | Path, analysis: AnalysisSettings | None = None) -> Fit:
+    """Read a fit that `save_fit` wrote.
+
+    Parameters
+    ----------
+    path : path-like
+    analysis : AnalysisSettings, optional
+        Settings to go on with where sampler or derived grids changed since; those of the file by
+        default. Model, cosmology and data sets are those of the file in any case.
+    """
     with h5py.File(path, "r") as file:
-        analysis = analysis_from_plain(json.loads(file.attrs["analysis"]))
+        stored = analysis_from_plain(json.loads(file.attrs["analysis"]))
         provenance = json.loads(file.attrs["provenance"])
         groups = [file["datasets"][name] for name in sorted(file["datasets"])]
         datasets = tuple(_read_dataset(group) for group in groups)
         blocks = tuple(_read_block(group) for group in groups)
-    distribution = ColumnDistribution.from_settings(analysis.model)
-    return Fit(analysis, Response(distribution, datasets, blocks), provenance)
+    if analysis is not None:
+        stored = replace(stored, sampler=analysis.sampler, derive=analysis.derive)
+    distribution = ColumnDistribution.from_settings(stored.model)
+    return Fit(stored, Response(distribution, datasets, blocks), provenance)
 
 
 def _read_dataset(group: h5py.Group) -> DataSet:

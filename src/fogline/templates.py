@@ -80,12 +80,13 @@ def _alternatives(spec: FileSpec, value: ValueColumn) -> Iterator[str]:
     yield '#   limit (string): upper, lower or empty (""); value is then the limit at the'
     yield f"#     confidence in meta{empty}"
     if spec.counts:
-        yield f"#   count, path instead of {value.name} and err: absorbers found, and the path searched"
+        yield f"#   count, path instead of {value.name} and err: absorbers found and path searched"
         yield "#     (of the kind that 'per' says, summed over sightlines); errors are then Poisson"
-    if len(value.units) > 1:
-        yield f"# Units: whatever converts to {' or '.join(value.units)}"
-    elif value.units:
-        yield f"# Unit: whatever converts to {value.units[0]}"
+    for form, other in spec.values.items():
+        if other.units:
+            where = f" with {spec.form_key}: {form}" if form else ""
+            yield f"# Unit of value and errors{where}: one that converts to"
+            yield f"#   {' or '.join(other.units)}"
 
 
 def _meta(spec: FileSpec) -> Iterator[str]:
@@ -108,7 +109,7 @@ def _meta_key(spec: FileSpec, key: MetaKey) -> Iterator[str]:
     grouped = any(key.name in group for group in spec.exactly_one_of)
     first = any(key.name == group[0] for group in spec.exactly_one_of)
     active = first or (key.required and not key.required_when)
-    notes = [key.help, "" if key.name == "quantity" else _range(key), _group_note(spec, key)]
+    notes = [key.help, _range(key), _group_note(spec, key)]
     if not active and not grouped:
         notes.append("optional" if not key.required_when else "")
     yield from _comment("; ".join(note for note in notes if note))
@@ -116,7 +117,8 @@ def _meta_key(spec: FileSpec, key: MetaKey) -> Iterator[str]:
 
 
 def _range(key: MetaKey) -> str:
-    return "" if key.kind == "text" else key.allowed
+    told = key.kind == "choice" and all(choice in key.help for choice in key.choices)
+    return "" if told or key.kind == "text" else key.allowed
 
 
 def _group_note(spec: FileSpec, key: MetaKey) -> str:

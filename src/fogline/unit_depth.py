@@ -27,9 +27,9 @@ from fogline.quadrature import column_nodes, interval_nodes
 
 Array = NDArray[np.float64]
 
-Z_NODES = 16
-COEFFICIENTS = 14
-PATH_NODES = 16
+Z_NODES = 14
+COEFFICIENTS = 12
+PATH_NODES = 14
 NEWTON_STEPS = 4
 
 # q is tabulated evenly in v = √(s / s_max), dense near s = 0 where free paths of high-redshift

@@ -15,6 +15,7 @@ from typing import Any, Final
 import yaml
 
 from fogline.faults import Fault, InputError
+from fogline.text_files import read_text
 
 Place = tuple[str | int, ...]
 """Keys and indices that lead to a value, outermost first."""
@@ -51,49 +52,6 @@ def dotted(place: Place) -> str:
     """Return a place as users write it, e.g. ``model.pivots[3]``."""
     text = "".join(f"[{key}]" if isinstance(key, int) else f".{key}" for key in place)
     return text.removeprefix(".")
-
-
-def read_text(path: str) -> str:
-    """Return the text of a user's file with ``\\n`` line ends.
-
-    Parameters
-    ----------
-    path : str
-        The file.
-
-    Returns
-    -------
-    str
-
-    Raises
-    ------
-    InputError
-        Where there is no such file, or it is no UTF-8 text.
-    """
-    try:
-        with open(path, "rb") as file:
-            raw = file.read()
-    except FileNotFoundError:
-        raise InputError([Fault(path, 1, "no such file")]) from None
-    except IsADirectoryError:
-        raise InputError([Fault(path, 1, "is a directory, not a file")]) from None
-    except (OSError, ValueError) as error:
-        reason = getattr(error, "strerror", None) or error
-        raise InputError([Fault(path, 1, f"cannot be read: {reason}")]) from None
-    return _decode(raw, path)
-
-
-def _decode(raw: bytes, path: str) -> str:
-    if b"\0" in raw:
-        line = raw[: raw.index(b"\0")].count(b"\n") + 1
-        raise InputError([Fault(path, line, "is a binary file, must be UTF-8 text")])
-    try:
-        text = raw.decode("utf-8-sig")
-    except UnicodeDecodeError as error:
-        line = raw[: error.start].count(b"\n") + 1
-        found = f"byte 0x{raw[error.start]:02x}"
-        raise InputError([Fault(path, line, f"is not UTF-8 text: found {found}")]) from None
-    return text.replace("\r\n", "\n").replace("\r", "\n")
 
 
 def read_yaml(path: str | os.PathLike[str]) -> Document:
@@ -140,7 +98,7 @@ def parse_yaml(text: str, path: str, faults: list[Fault]) -> Document | None:
         returned, for duplicate keys.
     """
     try:
-        node = _Loader(text).get_single_node()
+        node = yaml.SafeLoader(text).get_single_node()
     except yaml.YAMLError as error:
         faults.append(_yaml_fault(error, path))
         return None
@@ -154,17 +112,9 @@ def parse_yaml(text: str, path: str, faults: list[Fault]) -> Document | None:
         return Document(walk.value(node, ()), walk.lines)
     except RecursionError:
         faults.append(Fault(path, 1, "is nested too deeply"))
-    except _Abandoned as stop:
+    except _AbandonedError as stop:
         faults.append(stop.args[0])
     return None
-
-
-class _Loader(yaml.SafeLoader):
-    """PyYAML's safe loader, used for its nodes and scalars only."""
-
-    def __init__(self, stream: str) -> None:
-        super().__init__(stream)
-        self.anchors: dict[str, yaml.Node] = {}
 
 
 def _yaml_fault(error: yaml.YAMLError, path: str) -> Fault:
@@ -176,7 +126,7 @@ def _yaml_fault(error: yaml.YAMLError, path: str) -> Fault:
     return Fault(path, line, f"is not valid YAML: {' '.join(what.split())}")
 
 
-class _Abandoned(Exception):
+class _AbandonedError(Exception):
     """The document cannot be read further; holds the fault."""
 
 
@@ -197,9 +147,9 @@ class _Walk:
     def value(self, node: yaml.Node, place: Place) -> Any:
         self._n_values += 1
         if id(node) in self._open:
-            raise _Abandoned(self.fault(node, "refers to itself by a YAML alias"))
+            raise _AbandonedError(self.fault(node, "refers to itself by a YAML alias"))
         if self._n_values > _MAX_VALUES:
-            raise _Abandoned(self.fault(node, f"has more than {_MAX_VALUES} values"))
+            raise _AbandonedError(self.fault(node, f"has more than {_MAX_VALUES} values"))
         self._open.add(id(node))
         try:
             return self._inside(node, place)
@@ -267,9 +217,9 @@ class _Walk:
         sources = node.value if isinstance(node, yaml.SequenceNode) else [node]
         for source in sources:
             if not isinstance(source, yaml.MappingNode):
-                raise _Abandoned(self.fault(source, "'<<' must be given a mapping"))
+                raise _AbandonedError(self.fault(source, "'<<' must be given a mapping"))
             if id(source) in self._open:
-                raise _Abandoned(self.fault(source, "refers to itself by a YAML alias"))
+                raise _AbandonedError(self.fault(source, "refers to itself by a YAML alias"))
             self._open.add(id(source))
             yield from ((key, value, True) for key, value, _ in self._pairs(source))
             self._open.discard(id(source))

@@ -17,6 +17,10 @@ if TYPE_CHECKING:
 DEFAULT_CONFIG = "config/config.yaml"
 
 
+class UsageError(Exception):
+    """A wrong argument on the command line, which no file and line can be given for."""
+
+
 def add_selection(parser: argparse.ArgumentParser) -> None:
     """Add the options that choose an analysis and a point of its parameters."""
     parser.add_argument(

@@ -6,7 +6,8 @@ import argparse
 import sys
 from typing import Any
 
-from fogline.faults import Fault, InputError, nearest
+from fogline.commands.selection import UsageError
+from fogline.faults import nearest
 
 
 def add_to(commands: Any) -> None:
@@ -38,6 +39,6 @@ def run(options: argparse.Namespace) -> None:
             print(f"{name:<{width}}  {spec.description}")
         return
     if options.quantity not in FILE_SPECS:
-        what = f"unknown quantity '{options.quantity}'; {nearest(options.quantity, FILE_SPECS)}"
-        raise InputError([Fault("QUANTITY", 1, what)])
+        hint = nearest(options.quantity, FILE_SPECS)
+        raise UsageError(f"unknown quantity '{options.quantity}'; {hint}")
     sys.stdout.write(template(options.quantity))

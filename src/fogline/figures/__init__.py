@@ -1,0 +1,63 @@
+"""Figures. A new one is one module and one line of `FIGURES`."""
+
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any, Final
+
+from matplotlib.figure import Figure
+from matplotlib.style import context
+
+from fogline.figures import (
+    column_distribution,
+    convergence,
+    corner_plot,
+    hi_density,
+    lls_incidence,
+    lya_opacity,
+    mean_free_path,
+    opacity_budget,
+    prior_posterior,
+    pulls,
+)
+from fogline.figures.comparison import draw_comparison
+from fogline.figures.inputs import FigureInputs
+from fogline.figures.style import STYLE, dataset_styles
+from fogline.tables import write_whole
+
+FIGURES: Final[dict[str, Callable[[FigureInputs], Figure]]] = {
+    "column_distribution": column_distribution.draw,
+    "lya_opacity": lya_opacity.draw,
+    "lls_incidence": lls_incidence.draw,
+    "mean_free_path": mean_free_path.draw,
+    "hi_density": hi_density.draw,
+    "opacity_budget": opacity_budget.draw,
+    "corner": corner_plot.draw,
+    "pulls": pulls.draw,
+    "convergence": convergence.draw,
+    "prior_posterior": prior_posterior.draw,
+}
+"""What draws each figure, by the stem of its files."""
+
+METADATA: Final[dict[str, dict[str, Any]]] = {"pdf": {"CreationDate": None}, "png": {}}
+"""Nothing that changes from one run to the next: the same figure gives the same file."""
+
+
+def save(figure: Figure, path: str | Path) -> None:
+    """Write a figure as PDF and PNG.
+
+    Parameters
+    ----------
+    figure : matplotlib.figure.Figure
+    path : path-like
+        Without suffix.
+    """
+    for suffix, metadata in METADATA.items():
+
+        def write(temporary: Path, form: str = suffix, meta: dict[str, Any] = metadata) -> None:
+            with context(STYLE, after_reset=True):
+                figure.savefig(temporary, format=form, metadata=meta)
+
+        write_whole(f"{path}.{suffix}", write)
+
+
+__all__ = ["FIGURES", "FigureInputs", "dataset_styles", "draw_comparison", "save"]

@@ -42,7 +42,7 @@ LYA_OPACITY: Final = FileSpec(
         MetaKey(
             "form",
             "choice",
-            "what the numbers are: tau (-ln of the mean flux), mean_flux, decrement (1 - mean flux)",
+            "what the numbers are: tau (-ln mean flux), mean_flux, decrement (1 - mean flux)",
             choices=("tau", "mean_flux", "decrement"),
             example="tau",
         ),

@@ -1,0 +1,127 @@
+"""What analyses of the same data say, set side by side."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+from typing import Final
+
+import numpy as np
+from astropy.table import Table
+
+DEFINITION: Final = (
+    "shift_sigma: (median - reference_median) over half the 68% widths of the two analyses added "
+    "in quadrature. The analyses share data, so that their errors are correlated: the shift says "
+    "how far a conclusion moves in units of its error, and is not a significance."
+)
+
+REDSHIFTS: Final = (2.5, 3.5, 4.5)
+"""Redshifts of the comparison; each table's nearest is taken."""
+
+COLUMNS: Final = (13.5, 15.0, 16.5, 18.0, 19.5, 20.5, 21.5)
+"""Columns at which log f is compared [dex of cm^-2]."""
+
+
+@dataclass(frozen=True)
+class Headline:
+    """A derived quantity that analyses are compared by."""
+
+    quantity: str
+    table: str
+    prefix: str
+
+
+HEADLINES: Final = (
+    Headline("tau_eff", "lya_opacity", ""),
+    Headline("lx_lls_tau2", "incidence", "lx_lls_tau2_"),
+    Headline("lx_dla", "incidence", "lx_dla_"),
+    Headline("mean_free_path_local", "mean_free_path", "local_"),
+    Headline("mean_free_path_unit_depth", "mean_free_path", "unit_depth_"),
+    Headline("rho_hi", "hi_density", "rho_hi_"),
+)
+"""What is compared along redshift; log f is compared along columns."""
+
+
+@dataclass(frozen=True)
+class Value:
+    """One quantity at one redshift in one analysis: median and 68% interval."""
+
+    quantity: str
+    z: float
+    median: float
+    lo68: float
+    hi68: float
+
+    @property
+    def sigma(self) -> float:
+        """Half the width of the 68% interval."""
+        return 0.5 * (self.hi68 - self.lo68)
+
+
+def compare(results: Mapping[str, Mapping[str, Table]]) -> Table:
+    """Compare the headline quantities of analyses with those of the first.
+
+    Parameters
+    ----------
+    results : mapping of str to mapping of str to astropy.table.Table
+        The derived tables of every analysis by their names; the first analysis is the reference.
+
+    Returns
+    -------
+    astropy.table.Table
+        ``analysis, reference, quantity, z, median, lo68, hi68, reference_median, shift_sigma``;
+        NaN shift where an interval reaches beyond what is finite. No rows for one analysis.
+    """
+    reference, *others = results
+    wanted = {(value.quantity, value.z): value for value in _values(results[reference])}
+    rows = [
+        _row(analysis, reference, value, wanted[value.quantity, value.z])
+        for analysis in others
+        for value in _values(results[analysis])
+        if (value.quantity, value.z) in wanted
+    ]
+    table = Table(rows=rows, names=list(DTYPES), dtype=list(DTYPES.values()))
+    table.meta["definition"] = DEFINITION
+    return table
+
+
+DTYPES: Final = {
+    "analysis": "U64",
+    "reference": "U64",
+    "quantity": "U64",
+    "z": float,
+    "median": float,
+    "lo68": float,
+    "hi68": float,
+    "reference_median": float,
+    "shift_sigma": float,
+}
+"""Columns of the comparison."""
+
+
+def _row(analysis: str, reference: str, value: Value, base: Value) -> tuple[object, ...]:
+    with np.errstate(invalid="ignore", divide="ignore"):
+        shift = np.subtract(value.median, base.median) / np.hypot(value.sigma, base.sigma)
+    shift = float(shift) if np.isfinite(shift) else float("nan")
+    numbers = (value.z, value.median, value.lo68, value.hi68, base.median, shift)
+    return (analysis, reference, value.quantity, *numbers)
+
+
+def _values(tables: Mapping[str, Table]) -> Iterator[Value]:
+    for headline in HEADLINES:
+        table = tables[headline.table]
+        for z in REDSHIFTS:
+            yield _value(table[_nearest(table["z"], z)], headline.quantity, headline.prefix)
+    table = tables["column_distribution"]
+    reference = table[np.asarray(table["z"]) == table["z"][0]]
+    for log_nhi in COLUMNS:
+        yield _value(reference[_nearest(reference["log_nhi"], log_nhi)], f"log_f[{log_nhi:g}]", "")
+
+
+def _nearest(column: object, wanted: float) -> int:
+    return int(np.argmin(np.abs(np.asarray(column, float) - wanted)))
+
+
+def _value(row: Table.Row, quantity: str, prefix: str) -> Value:
+    median, lo68, hi68 = (float(row[prefix + name]) for name in ("median", "lo68", "hi68"))
+    return Value(quantity, float(row["z"]), median, lo68, hi68)

@@ -1,0 +1,105 @@
+"""Merged, valid blocks of a config turned into frozen settings."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from typing import Any, Final
+
+from fogline.settings import (
+    AnalysisSettings,
+    CosmologySettings,
+    DeriveSettings,
+    EvolutionSettings,
+    ModelSettings,
+    SamplerSettings,
+    SplinePriorSettings,
+)
+
+_ANCHOR_NEAR: Final = 20.3  # where the DLA counts of most studies begin and f is known best
+
+
+def analysis_settings(
+    name: str, files: tuple[str, ...], blocks: Mapping[str, Any]
+) -> AnalysisSettings:
+    """Return the settings of one analysis.
+
+    Parameters
+    ----------
+    name : str
+        The analysis.
+    files : tuple of str
+        Its constraint files.
+    blocks : mapping
+        Merged, valid, with defaults.
+
+    Returns
+    -------
+    AnalysisSettings
+    """
+    cosmology, derive, sampler = blocks["cosmology"], blocks["derive"], blocks["sampler"]
+    dark = cosmology["Ode0"]
+    whole = ("walkers", "ensembles", "seed", "target_ess", "max_steps", "thin")
+    return AnalysisSettings(
+        name=name,
+        datasets=files,
+        cosmology=CosmologySettings(
+            float(cosmology["H0"]), float(cosmology["Om0"]), None if dark is None else float(dark)
+        ),
+        model=_model(blocks["model"]),
+        sampler=SamplerSettings(
+            **{key: int(sampler[key]) for key in whole},
+            max_rhat=float(sampler["max_rhat"]),
+            warm_up=tuple(int(n) for n in sampler["warm_up"]),
+            components=tuple(int(n) for n in sampler["components"]),
+            independence_share=float(sampler["independence_share"]),
+        ),
+        derive=DeriveSettings(
+            redshifts=redshift_grid(derive["redshifts"]),
+            column_redshifts=redshift_grid(derive["column_redshifts"]),
+            draws=int(derive["draws"]),
+        ),
+    )
+
+
+def _model(model: Mapping[str, Any]) -> ModelSettings:
+    pivots = tuple(float(pivot) for pivot in model["pivots"])
+    evolution, anchor, slope = model["evolution"], model["prior"]["anchor"], model["prior"]["slope"]
+    n = len(evolution["pivots"])
+    priors = (
+        evolution["prior"] if isinstance(evolution["prior"], list) else [evolution["prior"]] * n
+    )
+    at = anchor.get("log_nhi")
+    at = min(pivots, key=lambda pivot: abs(pivot - _ANCHOR_NEAR)) if at is None else float(at)
+    walk = slope["kind"] == "walk"
+    return ModelSettings(
+        reference_redshift=float(model["reference_redshift"]),
+        pivots=pivots,
+        evolution=EvolutionSettings(tuple(map(float, evolution["pivots"])), tuple(priors)),
+        prior=SplinePriorSettings(
+            anchor_log_nhi=at,
+            anchor={key: item for key, item in anchor.items() if key != "log_nhi"},
+            slope_kind=slope["kind"],
+            first_slope=slope["first"],
+            slope_step=slope["step"] if walk else None,
+        ),
+        doppler=model["doppler"],
+    )
+
+
+def redshift_grid(grid: Mapping[str, float] | Sequence[float]) -> tuple[float, ...]:
+    """Return the redshifts that ``{start, stop, step}`` or a list names.
+
+    Parameters
+    ----------
+    grid : mapping or sequence
+        As in the config.
+
+    Returns
+    -------
+    tuple of float
+        With `stop` where a step ends there.
+    """
+    if not isinstance(grid, Mapping):
+        return tuple(float(z) for z in grid)
+    n_steps = int((grid["stop"] - grid["start"]) / grid["step"] + 1e-9)
+    return tuple(round(grid["start"] + i * grid["step"], 10) for i in range(n_steps + 1))

@@ -1,0 +1,84 @@
+"""Figures of an analysis, and the comparison of analyses, from files to files."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Sequence
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fogline.chains import EnsembleResult
+from fogline.combining import replicate_rng
+from fogline.comparison import compare
+from fogline.figures import FIGURES, FigureInputs, draw_comparison, save
+from fogline.posterior_file import read_draws
+from fogline.priors import Prior
+from fogline.response_file import Fit
+from fogline.tables import read_table, write_table
+
+Array = NDArray[np.float64]
+
+PRIOR_DRAWS = 4000
+
+
+def draw_figures(
+    fit: Fit,
+    *,
+    posterior: str | Path,
+    convergence: str | Path,
+    tables: Sequence[str],
+    ensembles: Sequence[str],
+    directory: str | Path,
+) -> None:
+    """Draw every figure of an analysis, each as PDF and PNG.
+
+    Parameters
+    ----------
+    fit : Fit
+    posterior, convergence : path-like
+        ``posterior.nc`` and ``convergence.json``.
+    tables, ensembles : sequence of str
+        Files of the tables and of the ensembles.
+    directory : path-like
+        Folder of the figures.
+    """
+    inputs = FigureInputs(
+        fit=fit,
+        tables={Path(path).stem: read_table(path) for path in tables},
+        theta=read_draws(posterior, fit.analysis.derive.draws),
+        prior_theta=prior_draws(fit),
+        convergence=json.loads(Path(convergence).read_text(encoding="utf-8")),
+        ensembles=[EnsembleResult.load(Path(path)) for path in ensembles],
+    )
+    for name, draw in FIGURES.items():
+        save(draw(inputs), Path(directory) / name)
+
+
+def prior_draws(fit: Fit) -> Array:
+    """Return draws from the prior, shape (`PRIOR_DRAWS`, n_parameters)."""
+    prior = Prior(fit.analysis.model)
+    return prior.to_parameters(replicate_rng(fit).standard_normal((PRIOR_DRAWS, prior.n_dim)))
+
+
+def write_comparison(
+    analyses: Sequence[str], tables: Sequence[str], *, table: str | Path, figure: str | Path
+) -> None:
+    """Compare the derived quantities of analyses with those of the first.
+
+    Parameters
+    ----------
+    analyses : sequence of str
+        The first is the reference.
+    tables : sequence of str
+        Files ``<analysis>/tables/<name>.ecsv`` of all analyses.
+    table, figure : path-like
+        Table and figure to write; the figure's suffix is replaced by each form's.
+    """
+    by_analysis = {name: {} for name in analyses}
+    for path in map(Path, tables):
+        by_analysis[path.parent.parent.name][path.stem] = read_table(path)
+    shifts = compare(by_analysis)
+    write_table(shifts, table)
+    save(draw_comparison(shifts), Path(figure).with_suffix(""))

@@ -1,0 +1,138 @@
+"""The column-density distribution with every data set that measures it, and residuals."""
+
+from __future__ import annotations
+
+from typing import Final
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+from numpy.typing import NDArray
+
+from fogline.datasets import DataSet
+from fogline.figures.axis import column_axis, shade_unmeasured
+from fogline.figures.bands import Band, draw_band, rows_at, table_band
+from fogline.figures.conventions import other_cosmology
+from fogline.figures.data_points import ToDisplay, along_columns, draw_points, draw_predictions
+from fogline.figures.inputs import FigureInputs
+from fogline.figures.style import (
+    ONE_COLUMN,
+    add_note,
+    dataset_styles,
+    new_figure,
+    readable,
+    styled,
+)
+
+Array = NDArray[np.float64]
+
+QUANTITY: Final = "column_distribution"
+
+LARGEST_RESIDUAL: Final = 1.2
+"""Half height of the residual panel at most [dex]."""
+
+RESIDUAL_NOTE: Final = (
+    "Lower panel: each bin over the prediction at its own redshift and in its own convention; "
+    "band: uncertainty of the fit."
+)
+
+F_LABEL: Final = r"$\log_{10}\,[f(N_\mathrm{HI},X)\,/\,\mathrm{cm}^2]$"
+
+
+@styled
+def draw(inputs: FigureInputs) -> Figure:
+    """Draw log f with bands at one redshift, data per dX, and residuals of all data.
+
+    Parameters
+    ----------
+    inputs : FigureInputs
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+    """
+    datasets = inputs.of_quantity(QUANTITY)
+    z = _redshift(inputs, datasets)
+    rows = rows_at(inputs.tables[QUANTITY], z)
+    band = table_band(rows, "log_nhi")
+    figure = new_figure(inputs, ONE_COLUMN, 4.4)
+    main, residual = figure.subplots(2, sharex=True, height_ratios=[2.3, 1.0])
+    column_axis(residual, inputs)
+    left_out = _draw_main(main, inputs, band, datasets, z=float(rows["z"][0]))
+    _draw_residuals(residual, inputs, band, datasets)
+    add_note(figure, [RESIDUAL_NOTE, *left_out])
+    return figure
+
+
+def to_log_f(data: DataSet) -> ToDisplay:
+    """Return the map from a file's numbers to log10 f: identity but for counts."""
+    if not data.counts:
+        return lambda log_f: log_f
+    path = data.search_path * (10.0**data.log_nhi_hi - 10.0**data.log_nhi_lo)
+    return lambda count: np.log10(count / path)
+
+
+def _redshift(inputs: FigureInputs, datasets: list[DataSet]) -> float:
+    """Return the median redshift of the data; the reference redshift where there are none."""
+    if not datasets:
+        return inputs.fit.setting.distribution.reference_redshift
+    return float(np.median(np.concatenate([data.z for data in datasets])))
+
+
+def _draw_main(
+    axes: Axes, inputs: FigureInputs, band: Band, datasets: list[DataSet], z: float
+) -> list[str]:
+    styles = dataset_styles(inputs.fit)
+    shade_unmeasured(axes, inputs, "no $f(N)$ data: prior and\nintegral constraints only")
+    draw_band(axes, band, label=f"fit at $z = {z:g}$ (68%, 95%)")
+    pivots = np.array(inputs.fit.setting.distribution.pivots)
+    axes.plot(
+        pivots,
+        np.interp(pivots, band.x, band.median),
+        "|",
+        color="k",
+        markersize=7.0,
+        zorder=3,
+        label="pivots",
+    )
+    left_out = []
+    for data in datasets:
+        if data.meta["per"] != "dX":
+            left_out.append(f"{readable(data.name)} (per d$z$)")
+            continue
+        points = along_columns(data, to_log_f(data))
+        difference = other_cosmology(data, inputs.fit.setting)
+        style = styles[data.name]
+        label = f"{style.label}, {_redshifts(data)}" + (f", {difference}" if difference else "")
+        draw_points(axes, points, style, label=label)
+        if difference:
+            draw_predictions(axes, points.x, to_log_f(data)(inputs.predicted(data)), style)
+    axes.set_ylabel(F_LABEL)
+    axes.set_ylim(band.lo68.min() - 1.0, band.hi68.max() + 1.0)
+    axes.legend(loc="lower left")
+    return [f"Residuals only: {', '.join(left_out)}."] if left_out else []
+
+
+def _redshifts(data: DataSet) -> str:
+    lo, hi = data.z_lo.min(), data.z_hi.max()
+    return f"$z = {lo:.3g}$" + ("" if lo == hi else f"–${hi:.3g}$")
+
+
+def _draw_residuals(axes: Axes, inputs: FigureInputs, band: Band, datasets: list[DataSet]) -> None:
+    styles = dataset_styles(inputs.fit)
+    shade_unmeasured(axes, inputs)
+    draw_band(axes, band.relative())
+    reach = [0.2]
+    for data in datasets:
+        predicted = to_log_f(data)(inputs.predicted(data))[1]
+        points = along_columns(data, _less(to_log_f(data), predicted))
+        draw_points(axes, points, styles[data.name])
+        ends = np.abs([points.y_lo, points.y_hi])
+        reach.append(float(ends[np.isfinite(ends)].max(initial=0.0)))
+    half = min(1.15 * max(reach), LARGEST_RESIDUAL)
+    axes.set_ylim(-half, half)
+    axes.set_ylabel("data / fit [dex]")
+
+
+def _less(to_display: ToDisplay, predicted: Array) -> ToDisplay:
+    return lambda values: to_display(values) - predicted

@@ -1,0 +1,99 @@
+"""How far the conclusions of other analyses lie from those of the first."""
+
+from __future__ import annotations
+
+from typing import Final
+
+import numpy as np
+from astropy.table import Table
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+
+from fogline.figures.style import (
+    COLOURS,
+    MARKERS,
+    ONE_COLUMN,
+    add_note,
+    readable,
+    styled,
+)
+
+LABELS: Final = {
+    "tau_eff": r"$\tau_\mathrm{eff}$",
+    "lx_lls_tau2": r"$\ell(X)$, $\tau_{912} \geq 2$",
+    "lx_dla": r"$\ell(X)$, DLAs",
+    "mean_free_path_local": r"$\lambda_\mathrm{mfp}$, local",
+    "mean_free_path_unit_depth": r"$\lambda_\mathrm{mfp}$, unit depth",
+    "rho_hi": r"$\rho_\mathrm{HI}$",
+}
+"""Labels of quantities; ``log_f[N]`` is spelt out by `quantity_label`."""
+
+SHADES: Final = ((2.0, "0.95"), (1.0, "0.88"))
+
+
+@styled
+def draw_comparison(table: Table) -> Figure:
+    """Draw the shift of every headline quantity, in units of its error, for each analysis.
+
+    Parameters
+    ----------
+    table : astropy.table.Table
+        As `fogline.comparison.compare` returns it, with at least one row.
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+    """
+    lines = list(dict.fromkeys(zip(table["quantity"], table["z"], strict=True)))
+    analyses = list(dict.fromkeys(str(name) for name in table["analysis"]))
+    figure = Figure(figsize=(ONE_COLUMN, 1.1 + 0.165 * len(lines)), layout="constrained")
+    axes = figure.subplots()
+    for sigma, shade in SHADES:
+        axes.axvspan(-sigma, sigma, facecolor=shade, edgecolor="none", zorder=0)
+    axes.axvline(0.0, color="0.5", linewidth=0.6, zorder=0.5)
+    for number, analysis in enumerate(analyses):
+        rows = table[np.asarray(table["analysis"], str) == analysis]
+        _draw_analysis(axes, rows, lines, number, len(analyses))
+    _dress(axes, table, lines)
+    reference = readable(str(table["reference"][0]))
+    figure.legend(loc="outside upper center", ncols=2)
+    add_note(
+        figure,
+        [f"Shifts from {reference}. The analyses share data: not a significance."],
+    )
+    return figure
+
+
+def quantity_label(quantity: str, z: float) -> str:
+    """Return the label of a quantity at a redshift."""
+    if quantity.startswith("log_f["):
+        label = rf"$\log f(10^{{{quantity[6:-1]}}})$"
+    else:
+        label = LABELS.get(quantity, readable(quantity))
+    return f"{label}, $z = {z:g}$"
+
+
+def _draw_analysis(
+    axes: Axes, rows: Table, lines: list[tuple[str, float]], number: int, n_analyses: int
+) -> None:
+    y = np.array([lines.index((row["quantity"], row["z"])) for row in rows], dtype=float)
+    y += 0.5 * (number - 0.5 * (n_analyses - 1)) / n_analyses
+    axes.plot(
+        np.asarray(rows["shift_sigma"], float),
+        y,
+        MARKERS[number % len(MARKERS)],
+        color=COLOURS[number % len(COLOURS)],
+        markersize=3.5,
+        label=readable(str(rows["analysis"][0])),
+        zorder=3,
+    )
+
+
+def _dress(axes: Axes, table: Table, lines: list[tuple[str, float]]) -> None:
+    shifts = np.abs(np.asarray(table["shift_sigma"], float))
+    reach = max(2.5, 1.1 * float(shifts[np.isfinite(shifts)].max(initial=0.0)))
+    axes.set_xlim(-reach, reach)
+    axes.set_ylim(len(lines) - 0.5, -0.5)
+    axes.set_xlabel(r"shift of the median [$\sigma$]")
+    axes.set_yticks(range(len(lines)), [quantity_label(*line) for line in lines])
+    axes.tick_params(axis="y", which="both", length=0.0)

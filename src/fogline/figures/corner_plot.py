@@ -1,0 +1,102 @@
+"""One- and two-dimensional marginals of all parameters."""
+
+from __future__ import annotations
+
+from typing import Final
+
+import corner
+import numpy as np
+from matplotlib.figure import Figure
+from matplotlib.ticker import MaxNLocator
+
+from fogline.figures.inputs import FigureInputs
+from fogline.figures.style import MODEL, TWO_COLUMNS, WARNING, styled
+
+SMOOTHING: Final = 0.8
+"""Width of the smoothing in histogram bins."""
+
+BINS: Final = 24
+
+TINY: Final = 5.0
+"""Print of tick labels [pt]: 13 panels share the page's width."""
+
+LEVELS: Final = tuple(1.0 - np.exp(-0.5 * np.array([1.0, 2.0]) ** 2))
+"""Probability within one and two sigma of a two-dimensional normal."""
+
+SPAN: Final = (0.0005, 0.9995)
+"""Quantiles at the ends of the axes."""
+
+
+@styled
+def draw(inputs: FigureInputs) -> Figure:
+    """Draw the marginals of every parameter and pair, contours at 39% and 86%.
+
+    Parameters
+    ----------
+    inputs : FigureInputs
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+    """
+    figure = Figure(figsize=(TWO_COLUMNS, TWO_COLUMNS))
+    labels = short_labels(inputs)
+    corner.corner(
+        inputs.theta,
+        bins=BINS,
+        range=[tuple(ends) for ends in np.quantile(inputs.theta, SPAN, axis=0).T],
+        labels=labels,
+        levels=LEVELS,
+        smooth=SMOOTHING,
+        color=MODEL,
+        plot_datapoints=False,
+        plot_density=False,
+        fill_contours=True,
+        max_n_ticks=3,
+        labelpad=0.28,
+        contour_kwargs={"linewidths": 0.5},
+        hist_kwargs={"linewidth": 0.8},
+        fig=figure,
+    )
+    _tidy(figure)
+    _caption(figure, inputs)
+    return figure
+
+
+def short_labels(inputs: FigureInputs) -> list[str]:
+    """Return log f and gamma with their columns as subscripts."""
+    distribution = inputs.fit.setting.distribution
+    pivots = [rf"$\log f_{{{pivot:g}}}$" for pivot in distribution.pivots]
+    return pivots + [rf"$\gamma_{{{pivot:g}}}$" for pivot in distribution.evolution_pivots]
+
+
+def _tidy(figure: Figure) -> None:
+    figure.subplots_adjust(
+        left=0.075, bottom=0.075, right=0.995, top=0.995, wspace=0.06, hspace=0.06
+    )
+    for axes in figure.axes:
+        axes.minorticks_off()
+        axes.tick_params(labelsize=TINY, length=1.5, width=0.4, pad=1.0, top=False, right=False)
+        axes.xaxis.label.set_fontsize(7.5)
+        axes.yaxis.label.set_fontsize(7.5)
+        for side in axes.spines.values():
+            side.set_linewidth(0.4)
+        for axis in (axes.xaxis, axes.yaxis):
+            if not isinstance(axis.get_major_locator(), MaxNLocator):
+                continue
+            axis.set_major_locator(MaxNLocator(2, prune="both"))
+
+
+def _caption(figure: Figure, inputs: FigureInputs) -> None:
+    settings = inputs.fit.setting.distribution
+    text = (
+        rf"$\log f_p = \log_{{10}} f(N_\mathrm{{HI}} = 10^p\,\mathrm{{cm}}^{{-2}})\,/\,\mathrm{{cm}}^2$"
+        f" at $z = {settings.reference_redshift:g}$\n"
+        r"$\gamma_p$: exponent of $(1+z)$ at that column"
+        "\ncontours: 39% and 86% (1 and 2 sigma)"
+    )
+    figure.text(0.985, 0.975, text, ha="right", va="top", fontsize=9.0, linespacing=1.5)
+    if not inputs.converged:
+        figure.text(
+            0.985, 0.89, "not converged", ha="right", va="top", color=WARNING, weight="bold"
+        )

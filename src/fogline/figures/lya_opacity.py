@@ -1,0 +1,67 @@
+"""Lyα effective optical depth against redshift."""
+
+from __future__ import annotations
+
+import numpy as np
+from matplotlib.figure import Figure
+from numpy.typing import NDArray
+
+from fogline.datasets import DataSet
+from fogline.derived.base import LLS_LOG_NHI
+from fogline.figures.axis import plain_log_ticks, redshift_axis
+from fogline.figures.bands import draw_band, table_band
+from fogline.figures.conventions import other_columns
+from fogline.figures.data_points import ToDisplay
+from fogline.figures.inputs import FigureInputs
+from fogline.figures.shown import Shown, convention_note, draw_along_z
+from fogline.figures.style import ONE_COLUMN, add_note, new_figure, styled
+
+Array = NDArray[np.float64]
+
+FORM_NOTES = {"tau": "", "mean_flux": r"$-\ln F$", "decrement": r"$-\ln(1-D)$"}
+"""How a label says that the file states something else than an optical depth."""
+
+
+@styled
+def draw(inputs: FigureInputs) -> Figure:
+    """Draw τ_eff with its bands and every data set, as an optical depth.
+
+    Parameters
+    ----------
+    inputs : FigureInputs
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+    """
+    setting = inputs.fit.setting
+    shown = [
+        Shown(
+            data,
+            to_tau(data),
+            other_columns(data, setting, -np.inf, LLS_LOG_NHI),
+            note=FORM_NOTES[data.meta["form"]],
+        )
+        for data in inputs.of_quantity("lya_opacity")
+    ]
+    figure = new_figure(inputs, ONE_COLUMN, 2.9)
+    axes = figure.subplots()
+    draw_band(axes, table_band(inputs.tables["lya_opacity"], "z"), label="fit (68%, 95%)")
+    draw_along_z(axes, inputs, shown)
+    axes.set_ylabel(r"Ly$\alpha$ effective optical depth $\tau_\mathrm{eff}$")
+    axes.set_yscale("log")
+    redshift_axis(axes, inputs)
+    axes.legend(loc="upper left")
+    columns = rf"Curve: $\log N = {setting.column_range[0]:g}$–${LLS_LOG_NHI:g}$."
+    add_note(figure, [columns, *convention_note(shown)])
+    return figure
+
+
+def to_tau(data: DataSet) -> ToDisplay:
+    """Return the map from a file's form to optical depth, one to one."""
+    form = data.meta["form"]
+    if form == "mean_flux":
+        return lambda flux: -np.log(flux)
+    if form == "decrement":
+        return lambda decrement: -np.log1p(-decrement)
+    return lambda tau: tau

@@ -1,0 +1,100 @@
+"""Mean free path at the Lyman limit against redshift, both definitions."""
+
+from __future__ import annotations
+
+from typing import Final
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+
+from fogline.cosmology import Cosmology
+from fogline.datasets import DataSet
+from fogline.figures.axis import plain_log_ticks, redshift_axis
+from fogline.figures.bands import Band, draw_band, table_band
+from fogline.figures.conventions import other_cosmology
+from fogline.figures.data_points import ToDisplay
+from fogline.figures.inputs import FigureInputs
+from fogline.figures.shown import Shown, convention_note, draw_along_z
+from fogline.figures.style import (
+    MODEL,
+    ONE_COLUMN,
+    SECOND_MODEL,
+    add_note,
+    new_figure,
+    readable,
+    styled,
+)
+from fogline.quantities.mean_free_path import length_unit
+
+DEFINITIONS: Final = {
+    "local": (MODEL, "-", "local: inverse opacity", True),
+    "unit_depth": (SECOND_MODEL, "--", "unit depth: flux falls to $1/e$", False),
+}
+"""Colour and line of the curve, label, and whether symbols are filled, by definition."""
+
+
+@styled
+def draw(inputs: FigureInputs) -> Figure:
+    """Draw the proper mean free path; filled symbols are local, open ones unit depth.
+
+    Parameters
+    ----------
+    inputs : FigureInputs
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+    """
+    datasets = inputs.of_quantity("mean_free_path")
+    shown = [_shown(data, inputs) for data in datasets if data.meta["frame"] == "proper"]
+    figure = new_figure(inputs, ONE_COLUMN, 3.2)
+    axes = figure.subplots()
+    axes.set_yscale("log")
+    for definition, (colour, line, label, _) in DEFINITIONS.items():
+        band = table_band(inputs.tables["mean_free_path"], "z", definition)
+        draw_band(axes, band, colour=colour, line=line, label=label)
+    draw_along_z(axes, inputs, shown)
+    axes.set_ylabel(r"mean free path at 912 Å [proper Mpc]")
+    redshift_axis(axes, inputs)
+    _limit_axis(axes, inputs, shown)
+    plain_log_ticks(axes)
+    axes.legend(loc="lower left")
+    add_note(figure, [*convention_note(shown), *_left_out(datasets)])
+    return figure
+
+
+def _shown(data: DataSet, inputs: FigureInputs) -> Shown:
+    *_, filled = DEFINITIONS[data.meta["definition"]]
+    cosmology = data.cosmology or inputs.fit.setting.cosmology
+    return Shown(
+        data,
+        to_mpc(data, cosmology),
+        other_cosmology(data, inputs.fit.setting),
+        filled=filled,
+        note=data.meta["definition"].replace("_", " "),
+    )
+
+
+def to_mpc(data: DataSet, cosmology: Cosmology) -> ToDisplay:
+    """Return the map from a file's unit of length to Mpc, with the file's own h."""
+    factor = 1.0 / length_unit(data.unit, cosmology)
+    return lambda length: length * factor
+
+
+def _left_out(datasets: list[DataSet]) -> list[str]:
+    names = [readable(data.name) for data in datasets if data.meta["frame"] != "proper"]
+    return [f"Not on this axis (comoving): {', '.join(names)}."] if names else []
+
+
+def _limit_axis(axes: Axes, inputs: FigureInputs, shown: list[Shown]) -> None:
+    """Fit the axis to what is finite: beyond reach a band runs off the top."""
+    table = inputs.tables["mean_free_path"]
+    ends = [_finite_ends(table_band(table, "z", name)) for name in DEFINITIONS]
+    values = [item.to_display(item.data.observed) for item in shown]
+    ends += [(float(v.min()), float(v.max())) for v in values]
+    axes.set_ylim(0.75 * min(lo for lo, _ in ends), 1.4 * max(hi for _, hi in ends))
+
+
+def _finite_ends(band: Band) -> tuple[float, float]:
+    return float(band.lo95.min()), float(band.hi68[np.isfinite(band.hi68)].max())

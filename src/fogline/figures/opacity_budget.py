@@ -1,0 +1,42 @@
+"""Which columns absorb at the Lyman limit, and which hold the H I mass."""
+
+from __future__ import annotations
+
+from matplotlib.figure import Figure
+
+from fogline.figures.axis import column_axis, mark_classes, shade_unmeasured
+from fogline.figures.bands import draw_band, rows_at, table_band
+from fogline.figures.inputs import FigureInputs
+from fogline.figures.style import MODEL, ONE_COLUMN, SECOND_MODEL, add_note, new_figure, styled
+
+
+@styled
+def draw(inputs: FigureInputs) -> Figure:
+    """Draw the shares of opacity and mass per dex of column, with their 68% bands.
+
+    Parameters
+    ----------
+    inputs : FigureInputs
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+    """
+    reference = inputs.fit.setting.distribution.reference_redshift
+    rows = rows_at(inputs.tables["opacity_budget"], reference)
+    figure = new_figure(inputs, ONE_COLUMN, 2.9)
+    axes = figure.subplots()
+    shade_unmeasured(axes, inputs)
+    for name, label, colour, line in (
+        ("opacity_share", "opacity at 912 Å", MODEL, "-"),
+        ("mass_share", r"H$\,$I mass", SECOND_MODEL, "--"),
+    ):
+        band = table_band(rows, "log_nhi", name)
+        draw_band(axes, band, colour=colour, line=line, label=label, with_95=False)
+    column_axis(axes, inputs)
+    axes.set_ylim(0.0, 1.12 * axes.get_ylim()[1])
+    axes.set_ylabel("share per dex of column [dex$^{-1}$]")
+    mark_classes(axes)
+    axes.legend(loc="upper left", title=f"$z = {rows['z'][0]:g}$ (68%)", alignment="left")
+    add_note(figure, ["Grey: no $f(N)$ data; prior and integral constraints only."])
+    return figure

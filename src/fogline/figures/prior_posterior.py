@@ -1,0 +1,110 @@
+"""Prior against posterior of every parameter: where the data speak."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Final
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+from numpy.typing import NDArray
+
+from fogline.figures.axis import column_axis, shade_unmeasured
+from fogline.figures.inputs import FigureInputs
+from fogline.figures.style import COLOURS, MODEL, ONE_COLUMN, add_note, new_figure, styled
+from fogline.tables import bands
+
+Array = NDArray[np.float64]
+
+SHIFT: Final = 0.09
+"""Distance of prior and posterior from their column [dex]."""
+
+PRIOR: Final = "0.55"
+POSTERIOR: Final = COLOURS[0]
+
+
+@dataclass(frozen=True)
+class Compared:
+    """Bands of a group of parameters under the prior and the posterior."""
+
+    columns: Array
+    prior: dict[str, Array]
+    posterior: dict[str, Array]
+
+    @property
+    def width_ratio(self) -> Array:
+        """Posterior over prior width of the 68% intervals, shape (n,)."""
+        widths = [b["hi68"] - b["lo68"] for b in (self.posterior, self.prior)]
+        return np.asarray(widths[0] / widths[1])
+
+
+@styled
+def draw(inputs: FigureInputs) -> Figure:
+    """Draw prior and posterior intervals of log f and the exponents, and the ratio of widths.
+
+    Parameters
+    ----------
+    inputs : FigureInputs
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+    """
+    distribution = inputs.fit.setting.distribution
+    n_pivots = len(distribution.pivots)
+    middle = np.median(inputs.theta, axis=0)
+    log_f = _compare(inputs, distribution.pivots, slice(n_pivots), middle[:n_pivots])
+    exponents = _compare(inputs, distribution.evolution_pivots, slice(n_pivots, None), 0.0)
+    figure = new_figure(inputs, ONE_COLUMN, 5.0)
+    upper, lower, ratio = figure.subplots(3, sharex=True, height_ratios=[1.4, 1.0, 1.0])
+    for axes, compared, label in (
+        (upper, log_f, "$\\log f$ $-$ posterior\nmedian [dex]"),
+        (lower, exponents, r"exponent $\gamma$ of $(1+z)$"),
+    ):
+        _draw_intervals(axes, compared)
+        axes.set_ylabel(label)
+    upper.legend(loc="upper right", ncols=2)
+    _draw_ratios(ratio, log_f, exponents)
+    for axes in (upper, ratio):
+        shade_unmeasured(axes, inputs)
+    column_axis(ratio, inputs)
+    lo, hi = inputs.fit.setting.column_range
+    ratio.set_xlim(lo - 0.3, hi + 0.3)
+    add_note(figure, ["Thick: 68%, thin: 95%. Grey columns: no $f(N)$ data."])
+    return figure
+
+
+def _compare(
+    inputs: FigureInputs, columns: tuple[float, ...], chosen: slice, zero: Array | float
+) -> Compared:
+    prior, posterior = (draws[:, chosen] - zero for draws in (inputs.prior_theta, inputs.theta))
+    return Compared(np.array(columns), bands(prior), bands(posterior))
+
+
+def _draw_intervals(axes: Axes, compared: Compared) -> None:
+    for side, band, colour, marker, label in (
+        (-SHIFT, compared.prior, PRIOR, "s", "prior"),
+        (SHIFT, compared.posterior, POSTERIOR, "o", "posterior"),
+    ):
+        x = compared.columns + side
+        axes.vlines(x, band["lo95"], band["hi95"], color=colour, linewidth=0.8)
+        axes.vlines(x, band["lo68"], band["hi68"], color=colour, linewidth=2.4)
+        axes.plot(x, band["median"], marker, color=colour, markersize=3.0, label=label)
+
+
+def _draw_ratios(axes: Axes, log_f: Compared, exponents: Compared) -> None:
+    axes.plot(log_f.columns, log_f.width_ratio, "o-", color=MODEL, label=r"$\log f$")
+    axes.plot(
+        exponents.columns,
+        exponents.width_ratio,
+        "s--",
+        color=MODEL,
+        markerfacecolor="white",
+        label=r"$\gamma$",
+    )
+    axes.axhline(1.0, color="0.5", linewidth=0.6)
+    axes.set_yscale("log")
+    axes.set_ylim(top=2.0)
+    axes.set_ylabel("posterior / prior\n68% width")
+    axes.legend(loc="lower right", ncols=2)

@@ -1,0 +1,79 @@
+"""What the Snakefile knows before any job runs: study, names of tables and figures, last words.
+
+Imported at every start of the workflow, so that nothing here pulls in numpy, scipy or astropy; the
+names are checked against the registries by a test.
+"""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from typing import Any, Final
+
+from fogline.config import parse_config
+from fogline.settings import Study
+from fogline.yaml_lines import read_yaml
+
+DERIVED: Final = (
+    "column_distribution",
+    "incidence",
+    "hi_density",
+    "lya_opacity",
+    "mean_free_path",
+    "opacity_budget",
+)
+"""Names of the derived tables, in the order of `fogline.derived.DERIVED_TABLES`."""
+
+FIGURES: Final = (
+    "column_distribution",
+    "lya_opacity",
+    "lls_incidence",
+    "mean_free_path",
+    "hi_density",
+    "opacity_budget",
+    "corner",
+    "pulls",
+    "convergence",
+    "prior_posterior",
+)
+"""Names of the figures, in the order of `fogline.figures.FIGURES`."""
+
+
+def read_study(config: Mapping[str, Any], files: Sequence[str | Path]) -> Study:
+    """Return the study of a merged config, faults placed in the last file that it came from.
+
+    Parameters
+    ----------
+    config : mapping
+        As the workflow merged it from files and command line.
+    files : sequence of path-like
+        The config files.
+
+    Raises
+    ------
+    InputError
+        With every fault.
+    """
+    if not files:
+        return parse_config(config, "config")
+    document = read_yaml(files[-1])
+    return parse_config(config, str(files[-1]), document.line)
+
+
+def closing_words(analyses: Sequence[str], results: str | Path = "results") -> str:
+    """Return the verdict of every analysis and where its results are.
+
+    Parameters
+    ----------
+    analyses : sequence of str
+    results : path-like
+        Folder of the results.
+    """
+    lines = []
+    for name in analyses:
+        report = json.loads((Path(results) / name / "convergence.json").read_text())
+        state = "converged" if report["converged"] else "NOT CONVERGED"
+        lines.append(f"{name}: {state}; see {Path(results) / name}/")
+        lines += [f"  {reason}" for reason in report["reasons"]]
+    return "\n".join(lines)

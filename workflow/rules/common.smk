@@ -1,0 +1,38 @@
+"""The study, checked before any rule is looked at, and what rules need to know of it."""
+
+import os
+import sys
+
+from fogline.plan import DERIVED, FIGURES, closing_words, read_study
+from fogline.faults import InputError
+from fogline.provenance import code_hash, settings_hash
+
+# Products of one walker batch are too small to share among threads, and ensembles run side by side.
+for variable in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS"):
+    os.environ.setdefault(variable, "1")
+
+try:
+    STUDY = read_study(config, workflow.configfiles)
+except InputError as error:
+    print(error, file=sys.stderr)
+    sys.exit(2)
+
+ANALYSES = list(STUDY.analyses)
+TABLES = ["parameters", *DERIVED, "predictive"]
+COMPARISON = ["results/comparison/figures/shifts.pdf"] if len(ANALYSES) > 1 else []
+
+
+wildcard_constraints:
+    analysis=r"[A-Za-z0-9_-]+",
+    ensemble=r"\d+",
+
+
+def analysis_of(wildcards):
+    """The settings of a job's analysis."""
+    return STUDY.analyses[wildcards.analysis]
+
+
+def ensembles_of(wildcards):
+    """The files of all ensembles of a job's analysis."""
+    count = analysis_of(wildcards).sampler.ensembles
+    return expand("results/{{analysis}}/ensembles/{i}.h5", i=range(count))

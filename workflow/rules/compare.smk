@@ -1,0 +1,24 @@
+rule compare_analyses:
+    input:
+        tables=expand(
+            "results/{analysis}/tables/{table}.ecsv", analysis=ANALYSES, table=TABLES
+        ),
+    output:
+        table="results/comparison/tables/shifts.ecsv",
+        pdf="results/comparison/figures/shifts.pdf",
+        png=report(
+            "results/comparison/figures/shifts.png",
+            caption="../report/shifts.rst",
+            category="Comparison of analyses",
+            labels={"figure": "shifts"},
+        ),
+    log:
+        "logs/compare_analyses.log",
+    params:
+        analyses=ANALYSES,
+        code=code_hash("fogline.comparison", "fogline.figures"),
+    resources:
+        mem_mb=1000,
+        runtime=10,
+    script:
+        "../scripts/compare_analyses.py"

@@ -1,0 +1,34 @@
+rule derive_tables:
+    input:
+        response="results/{analysis}/response.h5",
+        posterior="results/{analysis}/posterior.nc",
+    output:
+        expand("results/{{analysis}}/tables/{table}.ecsv", table=DERIVED),
+    log:
+        "logs/derive_tables/{analysis}.log",
+    params:
+        derive=lambda wildcards: settings_hash(analysis_of(wildcards).derive),
+        code=code_hash("fogline.deriving"),
+    resources:
+        mem_mb=2000,
+        runtime=20,
+    script:
+        "../scripts/derive_tables.py"
+
+
+rule check_predictive:
+    input:
+        response="results/{analysis}/response.h5",
+        posterior="results/{analysis}/posterior.nc",
+    output:
+        table="results/{analysis}/tables/predictive.ecsv",
+    log:
+        "logs/check_predictive/{analysis}.log",
+    params:
+        draws=lambda wildcards: analysis_of(wildcards).derive.draws,
+        code=code_hash("fogline.deriving"),
+    resources:
+        mem_mb=1000,
+        runtime=10,
+    script:
+        "../scripts/check_predictive.py"

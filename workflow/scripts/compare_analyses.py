@@ -1,0 +1,14 @@
+"""Compare the derived quantities of all analyses."""
+
+from fogline.jobs import job
+from snakemake.script import snakemake
+
+with job(snakemake.log[0]):
+    from fogline.drawing import write_comparison
+
+    write_comparison(
+        snakemake.params.analyses,
+        snakemake.input.tables,
+        table=snakemake.output.table,
+        figure=snakemake.output.pdf,
+    )

@@ -1,0 +1,13 @@
+"""Write every derived table of an analysis."""
+
+from pathlib import Path
+
+from fogline.jobs import job, settings_of
+from snakemake.script import snakemake
+
+with job(snakemake.log[0]):
+    from fogline.deriving import derive_tables
+    from fogline.response_file import load_fit
+
+    fit = load_fit(snakemake.input.response, settings_of(snakemake))
+    derive_tables(fit, snakemake.input.posterior, Path(snakemake.output[0]).parent)
