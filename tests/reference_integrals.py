@@ -147,10 +147,18 @@ class Truth:
         scan = np.expm1(np.log1p(z_em) * (1.0 - (np.arange(1, n_scan + 1) / n_scan) ** 2))
         above = z_em
         for z in np.maximum(scan, 0.0):
-            if self.tau_continuum(z, z_em) >= 1.0:
-                return brentq(lambda z: self.tau_continuum(z, z_em) - 1.0, z, above, xtol=1e-13)
+            if self._tau_scanned(z, z_em) >= 1.0 and self.tau_continuum(z, z_em) >= 1.0:
+                return brentq(lambda z: self.tau_continuum(z, z_em) - 1.0, z, above, xtol=1e-12)
             above = z
         return None
+
+    def _tau_scanned(self, z_912, z_em):
+        """Return τ from 20 fixed redshifts: enough to tell on which side of one it is."""
+        nodes, weights = np.polynomial.legendre.leggauss(20)
+        z = z_912 + 0.5 * (z_em - z_912) * (1.0 + nodes)
+        opacity = [self.opacity(x, (1.0 + x) / (1.0 + z_912)) for x in z]
+        # A hair more than τ, so that a root just beyond a scanned redshift is not passed over.
+        return 0.5 * (z_em - z_912) * (weights * dx_dz(self.cosmology, z)) @ opacity + 1e-3
 
 
 def bin_mean(value, z_lo, z_hi, cosmology):

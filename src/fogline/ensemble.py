@@ -12,7 +12,6 @@ from __future__ import annotations
 import time
 from collections.abc import Callable
 from pathlib import Path
-from typing import Final
 
 import emcee
 import numpy as np
@@ -20,34 +19,20 @@ from emcee.state import State
 from numpy.typing import NDArray
 from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]
 
+from fogline.blocks import BLOCK, acceptance, no_draws, thin_if_long
 from fogline.chains import EnsembleResult
 from fogline.checkpoint import RunState, load_checkpoint, save_checkpoint
 from fogline.evidence import importance_sample
-from fogline.mixture import fit_student_mixture
 from fogline.moves import CountedStretchMove, IndependenceMove, Tally
 from fogline.progress import Progress, Silent
 from fogline.settings import SamplerSettings
 from fogline.stopping import ending, look, status, worth_a_look
+from fogline.warmup import fit_round, prior_draws, rescue
 
 __all__ = ["EnsembleResult", "run_ensemble"]
 
 Array = NDArray[np.float64]
 LogProb = Callable[[Array], Array]
-
-BLOCK: Final = 20
-"""Stored draws between two looks at the chain."""
-
-MAX_CHAIN_BYTES: Final = 16e6
-"""A chain that would outgrow this is thinned by two."""
-
-FIT_SAMPLES: Final = 16_000
-"""Samples that a mixture is fitted to."""
-
-CHECKPOINT_SECONDS: Final = 1.0
-"""Least time between two checkpoints; which blocks leave one does not change the result."""
-
-START_ROUNDS: Final = 100
-"""Draws from the prior for a walker to find a finite posterior."""
 
 
 def run_ensemble(
@@ -156,7 +141,8 @@ class _Run:
         if message:
             self.progress.note(message)
         if state is None:
-            state = self.start()
+            state = prior_draws(self.log_prob, self.settings.walkers, self.n_dim, *self.streams[:2])
+            self.clear(state)
         else:
             self.progress.note(f"resumed from a checkpoint, {self.stage(state)} step {state.step}")
         self.warm_up(state, keeper)
@@ -170,30 +156,10 @@ class _Run:
             return "sampling"
         return f"warm-up {state.round + 1}/{len(self.rounds)}"
 
-    def start(self) -> RunState:
-        """Return walkers drawn from the prior, wider than any posterior."""
-        rng = np.random.default_rng(self.streams[0])
-        coords = rng.standard_normal((self.settings.walkers, self.n_dim))
-        ln_prob = self.log_prob(coords)
-        for _ in range(START_ROUNDS):
-            lost = np.flatnonzero(~np.isfinite(ln_prob))
-            if not len(lost):
-                break
-            coords[lost] = rng.standard_normal((len(lost), self.n_dim))
-            ln_prob[lost] = self.log_prob(coords[lost])
-        if not np.isfinite(ln_prob).any():
-            raise ValueError("no draw from the prior has a finite posterior")
-        emcee_random = np.random.RandomState(np.random.MT19937(self.streams[1]))
-        state = RunState(
-            0, 0, coords, ln_prob, emcee_random.get_state(), 1, None, *_no_draws(coords), {}
-        )
-        self.clear(state)
-        return state
-
     def clear(self, state: RunState) -> None:
         """Forget the draws of a round and begin the next."""
         state.step, state.thin = 0, self.settings.thin
-        state.chain, state.chain_ln_prob = _no_draws(state.coords)
+        state.chain, state.chain_ln_prob = no_draws(state.coords)
         state.tallies = {move: Tally(len(state.coords)) for move in ("stretch", "independence")}
 
     def warm_up(self, state: RunState, keeper: _Keeper) -> None:
@@ -241,7 +207,7 @@ class _Run:
         state.chain_ln_prob = np.concatenate([state.chain_ln_prob, ln_prob])
         state.step += n_draws * state.thin
         self.progress.advance(n_draws * state.thin)
-        _thin_if_long(state)
+        thin_if_long(state)
 
     def moves(self, state: RunState) -> list[tuple[emcee.moves.Move, float]]:
         """Return the round's moves; made anew for each block, so that they remember nothing."""
@@ -255,12 +221,11 @@ class _Run:
     def finish_round(self, state: RunState) -> None:
         """Fit the mixture to the later half of the round, and begin the next."""
         rng = np.random.default_rng(self.streams[3 + state.round])
-        later = state.chain[len(state.chain) // 2 :].reshape(-1, self.n_dim)
-        if len(later) > FIT_SAMPLES:
-            later = later[rng.choice(len(later), FIT_SAMPLES, replace=False)]
-        state.mixture = fit_student_mixture(later, self.rounds[state.round][1], rng)
-        rates = ", ".join(f"{m} {100 * a:.0f}%" for m, a in _acceptance(state).items())
-        self.progress.note(f"{self.stage(state)} done, accepted: {rates}")
+        state.mixture = fit_round(state, self.rounds[state.round][1], rng)
+        n_moved = rescue(state, self.log_prob, rng)
+        rates = ", ".join(f"{m} {100 * a:.0f}%" for m, a in acceptance(state).items())
+        rescued = f", {n_moved} stuck walkers moved" if n_moved else ""
+        self.progress.note(f"{self.stage(state)} done, accepted: {rates}{rescued}")
         state.round += 1
         self.clear(state)
 
@@ -278,7 +243,7 @@ class _Run:
             steps=state.step,
             thin=state.thin,
             warm_up=sum(self.settings.warm_up),
-            acceptance=_acceptance(state),
+            acceptance=acceptance(state),
             walker_acceptance=accepted / n_proposed,
             mixture=state.mixture,
             history=state.history,
@@ -288,29 +253,3 @@ class _Run:
             index=self.index,
             importance=importance_sample(self.log_prob, state.mixture, rng),
         )
-
-
-def _no_draws(coords: Array) -> tuple[Array, Array]:
-    return np.empty((0, *coords.shape)), np.empty((0, len(coords)))
-
-
-def _acceptance(state: RunState) -> dict[str, float]:
-    """Return the share of proposals taken, of moves that were made at all."""
-    return {
-        move: float(tally.accepted.mean() / tally.n_proposed)
-        for move, tally in state.tallies.items()
-        if tally.n_proposed
-    }
-
-
-def _thin_if_long(state: RunState) -> None:
-    """Drop every other draw where the chain outgrows its share of a file."""
-    draw_bytes = state.chain[0].nbytes + state.chain_ln_prob[0].nbytes
-    limit = max(int(MAX_CHAIN_BYTES / draw_bytes), 10 * BLOCK)
-    # Even, so that the last draw stays and later ones keep an equal distance.
-    if len(state.chain) >= limit and len(state.chain) % 2 == 0:
-        state.chain, state.chain_ln_prob = (
-            state.chain[1::2].copy(),
-            state.chain_ln_prob[1::2].copy(),
-        )
-        state.thin *= 2

@@ -99,7 +99,8 @@ def _meta(spec: FileSpec) -> Iterator[str]:
         note = "needed with " + " and ".join(f"{k}: {' | '.join(v)}" for k, v in when.items())
     else:
         note = "the one that the numbers were derived with"
-    yield f"  # Cosmology ({note}); H0 in km/s/Mpc, optional Ode0 (flat without)."
+    text = f"cosmology ({note}); H0 in km/s/Mpc, optional Ode0 (flat without)"
+    yield from _comment(text, indent="  ")
     yield f"  {'' if when == {} else '# '}cosmology: {{H0: 70.0, Om0: 0.3}}"
 
 

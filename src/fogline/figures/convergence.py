@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import textwrap
-from collections.abc import Sequence
+from collections.abc import Hashable, Sequence
 from typing import Any, Final
 
 import numpy as np
@@ -39,8 +39,8 @@ def draw(inputs: FigureInputs) -> Figure:
     """
     figure = Figure(figsize=(TWO_COLUMNS, 5.2), layout="constrained")
     _title(figure, inputs)
-    mosaic = [["trace0", "rhat"], ["trace1", "ess"], ["trace2", "growth"]]
-    panels = figure.subplot_mosaic(mosaic, width_ratios=[1.0, 1.0])
+    slots: list[list[Hashable]] = [["trace0", "rhat"], ["trace1", "ess"], ["trace2", "growth"]]
+    panels = figure.subplot_mosaic(slots)
     parameters = inputs.convergence["parameters"]
     for slot, index in enumerate(_least_converged(parameters)):
         _draw_trace(panels[f"trace{slot}"], inputs, index)

@@ -90,8 +90,8 @@ def _tidy(figure: Figure) -> None:
 def _caption(figure: Figure, inputs: FigureInputs) -> None:
     settings = inputs.fit.setting.distribution
     text = (
-        rf"$\log f_p = \log_{{10}} f(N_\mathrm{{HI}} = 10^p\,\mathrm{{cm}}^{{-2}})\,/\,\mathrm{{cm}}^2$"
-        f" at $z = {settings.reference_redshift:g}$\n"
+        r"$\log f_p$: $\log_{10}\,(f / \mathrm{cm}^2)$ at $N_\mathrm{HI} = 10^p\,\mathrm{cm}^{-2}$,"
+        f" $z = {settings.reference_redshift:g}$\n"
         r"$\gamma_p$: exponent of $(1+z)$ at that column"
         "\ncontours: 39% and 86% (1 and 2 sigma)"
     )

@@ -34,8 +34,10 @@ ARROW_SIZE: Final = 20.0
 BESIDE: Final = 4.0
 """Distance of a prediction from its datum [pt]."""
 
-_DOWN: Final = Path([(0, 0), (0, -1), (-0.22, -0.68), (0, -1), (0.22, -0.68)], [1, 2, 1, 2, 2])
-_UP: Final = Path(-_DOWN.vertices, _DOWN.codes)
+_ARROW: Final = np.array([(0.0, 0.0), (0.0, 1.0), (-0.22, 0.68), (0.0, 1.0), (0.22, 0.68)])
+_CODES: Final = [Path.MOVETO, Path.LINETO, Path.MOVETO, Path.LINETO, Path.LINETO]
+ARROWS: Final = {sign: Path(-sign * _ARROW, _CODES) for sign in (1, -1)}
+"""Markers of upper (down) and lower (up) limits, their tails at the limit."""
 
 
 @dataclass(frozen=True)
@@ -166,7 +168,7 @@ def draw_points(
         label=label,
     )
     container.lines[0].set_gid(f"data:{style.label}")
-    for sign, arrow in ((1, _DOWN), (-1, _UP)):
+    for sign, arrow in ARROWS.items():
         rows = points.limit == sign
         if rows.any():
             axes.plot(
@@ -220,4 +222,4 @@ def draw_predictions(
 
 
 def _beside(axes: Axes) -> Transform:
-    return offset_copy(axes.transData, axes.figure, x=BESIDE, units="points")
+    return offset_copy(axes.transData, axes.get_figure(root=True), x=BESIDE, units="points")

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Final
 
+import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
@@ -39,21 +40,13 @@ class AbsorberClass:
     filled: bool
 
 
+TAU_1, TAU_2 = float(log_nhi_at_tau(1.0)), float(log_nhi_at_tau(2.0))
+
 CLASSES: Final = (
-    AbsorberClass(
-        "lls_tau1",
-        r"$\tau_{912} \geq 1$",
-        log_nhi_at_tau(1.0),
-        float("inf"),
-        SECOND_MODEL,
-        "--",
-        False,
-    ),
-    AbsorberClass(
-        "lls_tau2", r"$\tau_{912} \geq 2$", log_nhi_at_tau(2.0), float("inf"), MODEL, "-", True
-    ),
+    AbsorberClass("lls_tau1", r"$\tau_{912} \geq 1$", TAU_1, np.inf, SECOND_MODEL, "--", False),
+    AbsorberClass("lls_tau2", r"$\tau_{912} \geq 2$", TAU_2, np.inf, MODEL, "-", True),
     AbsorberClass("sub_dla", "sub-DLA", SUB_DLA_LOG_NHI, DLA_LOG_NHI, SECOND_MODEL, ":", False),
-    AbsorberClass("dla", "DLA", DLA_LOG_NHI, float("inf"), MODEL, "-.", True),
+    AbsorberClass("dla", "DLA", DLA_LOG_NHI, np.inf, MODEL, "-.", True),
 )
 """Open symbols go with the dashed curve of tau >= 1, filled ones with the solid curve."""
 

@@ -51,6 +51,7 @@ def draw(inputs: FigureInputs) -> Figure:
     axes.set_ylabel(r"Ly$\alpha$ effective optical depth $\tau_\mathrm{eff}$")
     axes.set_yscale("log")
     redshift_axis(axes, inputs)
+    plain_log_ticks(axes)
     axes.legend(loc="upper left")
     columns = rf"Curve: $\log N = {setting.column_range[0]:g}$–${LLS_LOG_NHI:g}$."
     add_note(figure, [columns, *convention_note(shown)])

@@ -1,0 +1,1 @@
+"""Benchmarks: each figure against a plainly written baseline, in one run."""

@@ -1,0 +1,121 @@
+"""Warm-up of an ensemble: start from the prior, mixtures fitted on the way, stuck walkers rescued.
+
+Nothing here touches samples that count.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Final
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fogline.blocks import no_draws
+from fogline.checkpoint import RunState
+from fogline.mixture import StudentMixture, fit_student_mixture
+
+Array = NDArray[np.float64]
+LogProb = Callable[[Array], Array]
+
+START_ROUNDS: Final = 100
+"""Draws from the prior for a walker to find a finite posterior."""
+
+FIT_SAMPLES: Final = 20_000
+"""Samples that a mixture is fitted to, at most."""
+
+RESCUE_DRAWS: Final = 16
+"""Draws of the mixture per walker among which those that are moved find a place."""
+
+STUCK: Final = 6.0
+"""Excess of ln(p / q) over its median that marks a walker as stuck. Of a posterior that the
+mixture fits one sample in a thousand has more, so that hardly any is moved in vain."""
+
+
+def prior_draws(
+    log_prob: LogProb,
+    n_walkers: int,
+    n_dim: int,
+    start: np.random.SeedSequence,
+    steps: np.random.SeedSequence,
+) -> RunState:
+    """Return walkers drawn from the prior, wider than any posterior.
+
+    Parameters
+    ----------
+    log_prob : callable
+        ``(n, n_dim) -> (n,)``.
+    n_walkers, n_dim : int
+        Shape of the ensemble.
+    start, steps : SeedSequence
+        Streams of the start and of emcee's RandomState.
+
+    Returns
+    -------
+    RunState
+
+    Raises
+    ------
+    ValueError
+        If no draw has a finite posterior.
+    """
+    rng = np.random.default_rng(start)
+    coords = rng.standard_normal((n_walkers, n_dim))
+    ln_prob = log_prob(coords)
+    for _ in range(START_ROUNDS):
+        lost = np.flatnonzero(~np.isfinite(ln_prob))
+        if not len(lost):
+            break
+        coords[lost] = rng.standard_normal((len(lost), n_dim))
+        ln_prob[lost] = log_prob(coords[lost])
+    if not np.isfinite(ln_prob).any():
+        raise ValueError("no draw from the prior has a finite posterior")
+    random_state = np.random.RandomState(np.random.MT19937(steps)).get_state()
+    return RunState(0, 0, coords, ln_prob, random_state, 1, None, *no_draws(coords), {})
+
+
+def fit_round(state: RunState, n_components: int, rng: np.random.Generator) -> StudentMixture:
+    """Return a mixture fitted to the later half of a round's draws."""
+    later = state.chain[len(state.chain) // 2 :].reshape(-1, state.coords.shape[1])
+    if len(later) > FIT_SAMPLES:
+        later = later[rng.choice(len(later), FIT_SAMPLES, replace=False)]
+    return fit_student_mixture(later, n_components, rng)
+
+
+def rescue(state: RunState, log_prob: LogProb, rng: np.random.Generator) -> int:
+    """Move walkers that the independence move could not: importance-weighted draws replace them.
+
+    A walker where ln(p / q) is e^20 above the others' refuses every proposal of the mixture, and
+    stretch moves seldom reach it. Where it starts to count is free to choose; if its place has
+    weight in the posterior, counted samples find it again.
+
+    Parameters
+    ----------
+    state : RunState
+        Its positions are changed.
+    log_prob : callable
+        ``(n, n_dim) -> (n,)``.
+    rng : Generator
+        Draws the new places.
+
+    Returns
+    -------
+    int
+        Walkers moved.
+    """
+    mixture = state.mixture
+    assert mixture is not None
+    ln_weight = state.ln_prob - mixture.ln_density(state.coords)
+    # A walker still at -inf is lost as well, though its weight is the least of all.
+    stuck = np.flatnonzero((ln_weight > np.median(ln_weight) + STUCK) | (ln_weight == -np.inf))
+    if not len(stuck):
+        return 0
+    draws = mixture.draw(RESCUE_DRAWS * len(state.coords), rng)
+    ln_prob = log_prob(draws)
+    ln_weight = ln_prob - mixture.ln_density(draws)
+    weight = np.exp(ln_weight - ln_weight.max())
+    if not np.isfinite(weight).all():
+        return 0  # no draw has a finite posterior: the mixture is no help yet
+    chosen = rng.choice(len(draws), size=len(stuck), p=weight / weight.sum())
+    state.coords[stuck], state.ln_prob[stuck] = draws[chosen], ln_prob[chosen]
+    return len(stuck)
