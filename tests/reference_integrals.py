@@ -140,7 +140,8 @@ class Truth:
         def integrand(z):
             return dx_dz(self.cosmology, z) * self.opacity(z, (1.0 + z) / (1.0 + z_912))
 
-        return quad_vec(integrand, z_912, z_em, epsabs=0, epsrel=1e-9)[0]
+        # An absolute tolerance too: between equal redshifts there is nothing to be relative to.
+        return quad_vec(integrand, z_912, z_em, epsabs=1e-10, epsrel=1e-9)[0]
 
     def z_of_unit_depth(self, z_em, n_scan=30):
         """Return z_912 at the first τ = 1 below `z_em`, None where there is none above 0."""

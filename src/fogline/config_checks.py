@@ -124,12 +124,15 @@ def distribution_faults(study: Study, name: str) -> Iterator[PlacedFault]:
     from fogline.doppler import doppler_average
 
     model = study.analyses[name].model
-    evolution = enumerate(model.evolution.priors)
+    priors = model.evolution.priors
+    # One distribution for all pivots is one fault, not one for each of them.
+    same = all(prior == priors[0] for prior in priors)
+    evolution = [((), priors[0])] if same else [((i,), prior) for i, prior in enumerate(priors)]
     checks: list[tuple[Place, Callable[[Any], Any], Any]] = [
         (("model", "doppler"), doppler_average, model.doppler),
         (("model", "prior", "anchor"), frozen, model.prior.anchor),
         (("model", "prior", "slope", "first"), _positive, model.prior.first_slope),
-        *((("model", "evolution", "prior", i), frozen, prior) for i, prior in evolution),
+        *((("model", "evolution", "prior", *i), frozen, prior) for i, prior in evolution),
     ]
     if model.prior.slope_step is not None:
         checks.append((("model", "prior", "slope", "step"), frozen, model.prior.slope_step))

@@ -10,7 +10,7 @@ it. Each reason against is given in words.
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -100,7 +100,12 @@ class ConvergenceReport:
 
 
 def assess(
-    results: Sequence[EnsembleResult], settings: SamplerSettings, names: Sequence[str]
+    results: Sequence[EnsembleResult],
+    settings: SamplerSettings,
+    names: Sequence[str],
+    *,
+    coordinates: Sequence[str] | None = None,
+    to_parameters: Callable[[Array], Array] | None = None,
 ) -> ConvergenceReport:
     """Judge the ensembles of one analysis together.
 
@@ -111,13 +116,21 @@ def assess(
     settings : SamplerSettings
         Targets.
     names : sequence of str
-        Parameters, in the order of the chain's last axis.
+        Parameters, in order.
+    coordinates : sequence of str, optional
+        Names of the sampling coordinates, the chain's last axis; the parameters' where not given.
+    to_parameters : callable, optional
+        Map from coordinates, (n, n_dim), to parameters; the identity where not given. R-hat and
+        effective sizes are those of the parameters, since they are what is reported.
 
     Returns
     -------
     ConvergenceReport
     """
     chains = aligned(results)
+    coordinates = names if coordinates is None else coordinates
+    if to_parameters is not None:
+        chains = to_parameters(chains.reshape(-1, chains.shape[-1])).reshape(chains.shape)
     parameters = tuple(_diagnose(name, chains[..., k]) for k, name in enumerate(names))
     tables = tuple(tuple(growth(r.chain, r.thin)) for r in results)
     reasons = [
@@ -125,10 +138,10 @@ def assess(
         *_few_samples(parameters, settings.target_ess),
         *checks.step_limit(results),
         *checks.stuck_walkers(results),
-        *checks.disagreeing_ensembles(results, names),
+        *checks.disagreeing_ensembles(results, coordinates),
         *checks.chain_lengths(results, tables),
         *checks.bad_evidence(results),
-        *checks.chain_against_weights(results, names),
+        *checks.chain_against_weights(results, coordinates),
     ]
     evidence = combine_evidence([r.importance for r in results])
     notes = _notes(results, evidence)

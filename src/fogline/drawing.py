@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from pathlib import Path
 
 import numpy as np
+from astropy.table import Table
 from numpy.typing import NDArray
 
 from fogline.chains import EnsembleResult
@@ -76,7 +77,7 @@ def write_comparison(
     table, figure : path-like
         Table and figure to write; the figure's suffix is replaced by each form's.
     """
-    by_analysis = {name: {} for name in analyses}
+    by_analysis: dict[str, dict[str, Table]] = {name: {} for name in analyses}
     for path in map(Path, tables):
         by_analysis[path.parent.parent.name][path.stem] = read_table(path)
     shifts = compare(by_analysis)

@@ -12,6 +12,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable
 from pathlib import Path
+from typing import Final
 
 import emcee
 import numpy as np
@@ -23,7 +24,7 @@ from fogline.blocks import BLOCK, acceptance, no_draws, thin_if_long
 from fogline.chains import EnsembleResult
 from fogline.checkpoint import RunState, load_checkpoint, save_checkpoint
 from fogline.evidence import importance_sample
-from fogline.moves import CountedStretchMove, IndependenceMove, Tally
+from fogline.moves import CountedStretchMove, IndependenceMove, LocalMove, Tally
 from fogline.progress import Progress, Silent
 from fogline.settings import SamplerSettings
 from fogline.stopping import ending, look, status, worth_a_look
@@ -90,6 +91,17 @@ def _guarded(log_prob: LogProb) -> LogProb:
         return value
 
     return guarded
+
+
+MOVES: Final = ("independence", "local", "stretch")
+"""Moves of a round; the first has stretch moves alone."""
+
+
+LOCAL_SHARE: Final = 0.7
+"""Share of local mixture moves in what independence proposals leave."""
+
+CHECKPOINT_SECONDS: Final = 1.0
+"""Least time between two checkpoints; which blocks leave one does not change the result."""
 
 
 class _Keeper:
@@ -160,7 +172,7 @@ class _Run:
         """Forget the draws of a round and begin the next."""
         state.step, state.thin = 0, self.settings.thin
         state.chain, state.chain_ln_prob = no_draws(state.coords)
-        state.tallies = {move: Tally(len(state.coords)) for move in ("stretch", "independence")}
+        state.tallies = {move: Tally(len(state.coords)) for move in MOVES}
 
     def warm_up(self, state: RunState, keeper: _Keeper) -> None:
         """Run what is left of the warm-up."""
@@ -215,8 +227,14 @@ class _Run:
         if state.mixture is None:
             return [(stretch, 1.0)]
         independence = IndependenceMove(state.mixture, state.tallies["independence"])
+        local = LocalMove(state.mixture, state.tallies["local"])
         share = self.settings.independence_share
-        return [(stretch, 1.0 - share), (independence, share)]
+        rest = 1.0 - share
+        return [
+            (independence, share),
+            (local, LOCAL_SHARE * rest),
+            (stretch, (1.0 - LOCAL_SHARE) * rest),
+        ]
 
     def finish_round(self, state: RunState) -> None:
         """Fit the mixture to the later half of the round, and begin the next."""

@@ -143,7 +143,7 @@ class Likelihood:
         """
         model = self.in_data_space(predicted)
         sigma = np.where(model > data, self.sigma_hi, self.sigma_lo)
-        sigma = np.where(self.poisson, np.sqrt(model), sigma)
+        sigma = np.where(self.poisson, np.sqrt(np.where(self.poisson, model, 1.0)), sigma)
         return np.asarray((data - model) / sigma)
 
     def in_data_space(self, predicted: Array) -> Array:

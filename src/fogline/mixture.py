@@ -123,7 +123,7 @@ class StudentMixture:
         -------
         ndarray, shape (n,)
         """
-        return _ln_sum(self.ln_components(x)[0])
+        return ln_sum(self.ln_components(x)[0])
 
     def draw(self, n: int, rng: np.random.Generator | np.random.RandomState) -> Array:
         """Draw points from the mixture.
@@ -143,11 +143,15 @@ class StudentMixture:
         component = np.searchsorted(edges, rng.uniform(size=n), side="right")
         normal = rng.standard_normal(size=(n, self.n_dim))
         normal /= np.sqrt(rng.chisquare(self.dof, size=n) / self.dof)[:, None]
-        x = self.means[component]
+        return self.means[component] + self.scaled(component, normal)
+
+    def scaled(self, component: NDArray[np.intp], normal: Array) -> Array:
+        """Return each row (n, n_dim) times the factor of its component (n,)."""
+        out = np.empty_like(normal)
         for c in np.unique(component):
             mine = component == c
-            x[mine] += normal[mine] @ self.factors[c].T
-        return x
+            out[mine] = normal[mine] @ self.factors[c].T
+        return out
 
 
 def fit_student_mixture(
@@ -156,6 +160,7 @@ def fit_student_mixture(
     rng: np.random.Generator,
     *,
     dof: float = 8.0,
+    pooled_weight: float = POOLED_WEIGHT,
     max_iterations: int = 60,
     tolerance: float = 2e-3,
 ) -> StudentMixture:
@@ -171,6 +176,9 @@ def fit_student_mixture(
         Chooses the starting centres; the fit is a function of the samples and of its state.
     dof : float, optional
         Degrees of freedom.
+    pooled_weight : float, optional
+        Samples' worth of the average covariance in each component's own; 0 where the samples
+        still hold walkers on their way, whose covariance is no example.
     max_iterations : int, optional
         Iterations at most, on a subset; `FULL_ITERATIONS` on all samples follow.
     tolerance : float, optional
@@ -194,9 +202,9 @@ def fit_student_mixture(
     x = x[rng.permutation(n)]
     few = x[: max(n // SUBSET, 2 * (d + 1))]
     assignment = _starting_assignment(few, n_components, rng)
-    mixture = _maximise(few, _products(few), assignment, assignment, dof)
-    mixture = _improve(mixture, few, max_iterations, tolerance)
-    mixture = _improve(mixture, x, FULL_ITERATIONS, tolerance)
+    mixture = _maximise(few, _products(few), assignment, assignment, dof, pooled_weight)
+    mixture = _improve(mixture, few, max_iterations, tolerance, pooled_weight)
+    mixture = _improve(mixture, x, FULL_ITERATIONS, tolerance, pooled_weight)
     return StudentMixture(
         mixture.weights, mixture.means @ scale.T + centre, scale @ mixture.factors, dof
     )
@@ -214,25 +222,27 @@ def _robust_frame(samples: Array) -> tuple[Array, Array]:
     return centre, spread[:, None] * np.linalg.cholesky(covariance)
 
 
-def _improve(mixture: StudentMixture, x: Array, n: int, tolerance: float) -> StudentMixture:
+def _improve(
+    mixture: StudentMixture, x: Array, n: int, tolerance: float, pooled_weight: float
+) -> StudentMixture:
     """Return the mixture after at most `n` iterations of expectation-maximisation."""
     products, dof = _products(x), mixture.dof
     previous = -np.inf
     for _ in range(n):
         ln_part, distance = mixture.ln_components(x)
-        ln_density = _ln_sum(ln_part)
+        ln_density = ln_sum(ln_part)
         mean = float(ln_density.mean())
         if mean - previous < tolerance:
             break
         previous = mean
         responsibility = np.exp(ln_part - ln_density)
         pull = responsibility * ((dof + x.shape[1]) / (dof + distance))
-        mixture = _maximise(x, products, responsibility, pull, dof)
+        mixture = _maximise(x, products, responsibility, pull, dof, pooled_weight)
     return mixture
 
 
 def _maximise(
-    x: Array, products: Array, responsibility: Array, pull: Array, dof: float
+    x: Array, products: Array, responsibility: Array, pull: Array, dof: float, pooled_weight: float
 ) -> StudentMixture:
     """Return the mixture that the assignment (C, n) and its latent scales ask for."""
     d = x.shape[1]
@@ -243,8 +253,8 @@ def _maximise(
     second = (pull @ products).reshape(-1, d, d)
     scatter = second - total[:, None, None] * means[:, :, None] * means[:, None, :]
     pooled = scatter.sum(axis=0) / count.sum()
-    scatter += POOLED_WEIGHT * pooled + FLOOR_VARIANCE * np.eye(d)
-    scatter /= (count + POOLED_WEIGHT + 1.0)[:, None, None]
+    scatter += pooled_weight * pooled + FLOOR_VARIANCE * np.eye(d)
+    scatter /= (count + pooled_weight + 1.0)[:, None, None]
     return StudentMixture(count / count.sum(), means, np.linalg.cholesky(scatter), dof)
 
 
@@ -278,7 +288,7 @@ def _squared(x: Array, centres: Array) -> Array:
     return np.maximum(square, 0.0)
 
 
-def _ln_sum(ln_part: Array) -> Array:
-    """Return ln of the sum over components; scipy's logsumexp is several times slower here."""
+def ln_sum(ln_part: Array) -> Array:
+    """Return ln of the sum over components (C, n); scipy's logsumexp is far slower here."""
     top = ln_part.max(axis=0)
     return np.asarray(top + np.log(np.exp(ln_part - top).sum(axis=0)))

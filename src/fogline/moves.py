@@ -13,7 +13,7 @@ from emcee.moves import Move, StretchMove
 from emcee.state import State
 from numpy.typing import NDArray
 
-from fogline.mixture import StudentMixture
+from fogline.mixture import StudentMixture, ln_sum
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -95,14 +95,9 @@ class IndependenceMove(Move):
     def __init__(self, mixture: StudentMixture, tally: Tally) -> None:
         self.mixture = mixture
         self.tally = tally
-        self.forget()
-
-    def forget(self) -> None:
-        """Drop remembered densities.
-
-        A matrix product may round a row differently in another batch, so a resumed run must
-        start from no memory exactly where the uninterrupted one did.
-        """
+        # Densities where the walkers are, kept from one proposal to the next. A matrix product may
+        # round a row differently in another batch, so a resumed run must start from no memory
+        # exactly where the uninterrupted one did: a move lives for one block.
         self._coords: Array = np.empty((0, 0))
         self._ln_q: Array = np.empty(0)
 
@@ -133,6 +128,53 @@ class IndependenceMove(Move):
             self._coords[moved] = coords[moved]
             self._ln_q[moved] = self.mixture.ln_density(coords[moved])
         return self._ln_q
+
+
+class LocalMove(Move):
+    """Steps that leave the mixture invariant, short ones included.
+
+    Of the mixture's latent component c and scale u a pair is drawn given the walker's position x;
+    given the pair the mixture is normal, and x' = mean + sqrt(1 - b^2) (x - mean) + b (a draw
+    about zero), b in (0, 1), is reversible with respect to it. Hence the ratio of
+    Metropolis-Hastings is that of p / q alone, as for an independence proposal; but p / q hardly
+    changes over a short step. A walker in a tail that the mixture is too thin for, where every
+    independence proposal is refused, walks out of it.
+
+    Parameters
+    ----------
+    mixture : StudentMixture
+        Frozen.
+    tally : Tally
+        Counts the proposals.
+    """
+
+    def __init__(self, mixture: StudentMixture, tally: Tally) -> None:
+        self.mixture = mixture
+        self.tally = tally
+
+    def propose(self, model: Any, state: State) -> tuple[State, Mask]:
+        """Propose a step of random length to every walker."""
+        proposed, ln_q = self._step(state.coords, model.random)
+        ln_prob, _ = model.compute_log_prob_fn(proposed)
+        ln_factor = ln_q - self.mixture.ln_density(proposed)
+        accepted = _accept(ln_prob, state.log_prob, ln_factor, model.random)
+        self.tally.add(accepted)
+        return self.update(state, State(proposed, log_prob=ln_prob), accepted), accepted
+
+    def _step(self, x: Array, random: np.random.RandomState) -> tuple[Array, Array]:
+        """Return proposals and the mixture's ln density where the walkers are."""
+        mixture, (n, d) = self.mixture, x.shape
+        ln_part, distance = mixture.ln_components(x)
+        ln_q = ln_sum(ln_part)
+        # Gumbel noise picks a component in proportion to its responsibility.
+        component = (ln_part + random.gumbel(size=ln_part.shape)).argmax(axis=0)
+        m = distance[component, np.arange(n)]
+        scale = random.gamma(0.5 * (mixture.dof + d), size=n) / (0.5 * (mixture.dof + m))
+        length = random.uniform(size=(n, 1))
+        noise = mixture.scaled(component, random.standard_normal(size=(n, d)))
+        mean = mixture.means[component]
+        kept = np.sqrt(1.0 - length**2) * (x - mean)
+        return mean + kept + length * noise / np.sqrt(scale)[:, None], ln_q
 
 
 def _accept(

@@ -10,6 +10,7 @@ At most `MAX_DRAWS` draws an ensemble are kept, evenly thinned.
 from __future__ import annotations
 
 from pathlib import Path
+from typing import Final
 
 import arviz_base
 import numpy as np
@@ -22,7 +23,7 @@ from fogline.tables import write_whole
 Array = NDArray[np.float64]
 
 MAX_DRAWS = 8192
-ENGINE = "h5netcdf"
+ENGINE: Final = "h5netcdf"
 
 
 def write_posterior(path: str | Path, fit: Fit, chains: Array, rng: np.random.Generator) -> None:
@@ -55,7 +56,7 @@ def write_posterior(path: str | Path, fit: Fit, chains: Array, rng: np.random.Ge
         },
     )
     tree.attrs.update({key: str(value) for key, value in fit.table_meta().items()})
-    write_whole(path, lambda temporary: tree.to_netcdf(temporary, engine=ENGINE))
+    write_whole(path, lambda temporary: tree.to_netcdf(str(temporary), engine=ENGINE))
 
 
 def _sample_stats(fit: Fit, x: Array) -> dict[str, Array]:

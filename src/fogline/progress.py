@@ -123,19 +123,59 @@ class Bar:
             self._bar = None
 
 
-def progress_for(label: str, stream: TextIO | None = None) -> Progress:
-    """Return a bar where the stream is a terminal, lines elsewhere.
+class Both:
+    """Tells two others, such as a log and a terminal.
+
+    Parameters
+    ----------
+    first, second : Progress
+    """
+
+    def __init__(self, first: Progress, second: Progress) -> None:
+        self._members = (first, second)
+
+    def stage(self, name: str, n_steps: int) -> None:
+        """Pass on."""
+        for member in self._members:
+            member.stage(name, n_steps)
+
+    def advance(self, n_steps: int) -> None:
+        """Pass on."""
+        for member in self._members:
+            member.advance(n_steps)
+
+    def note(self, text: str) -> None:
+        """Pass on."""
+        for member in self._members:
+            member.note(text)
+
+    def status(self, text: str) -> None:
+        """Pass on."""
+        for member in self._members:
+            member.status(text)
+
+    def close(self) -> None:
+        """Pass on."""
+        for member in self._members:
+            member.close()
+
+
+def progress_for(label: str, log: TextIO, terminal: TextIO | None = None) -> Progress:
+    """Return lines in a log, and a bar as well where somebody watches a terminal.
 
     Parameters
     ----------
     label : str
         What runs, e.g. ``joint, ensemble 1``.
-    stream : text stream, optional
-        By default stderr.
+    log : text stream
+        Takes plain lines.
+    terminal : text stream, optional
+        By default stderr; lines go there too where it is no terminal.
 
     Returns
     -------
     Progress
     """
-    stream = sys.stderr if stream is None else stream
-    return Bar(stream, label) if stream.isatty() else Lines(stream, label)
+    terminal = sys.stderr if terminal is None else terminal
+    shown = Bar(terminal, label) if terminal.isatty() else Lines(terminal, label)
+    return Both(Lines(log, label), shown)

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from fogline.blocks import no_draws
 from fogline.checkpoint import RunState
-from fogline.mixture import StudentMixture, fit_student_mixture
+from fogline.mixture import POOLED_WEIGHT, StudentMixture, fit_student_mixture
 
 Array = NDArray[np.float64]
 LogProb = Callable[[Array], Array]
@@ -79,7 +79,8 @@ def fit_round(state: RunState, n_components: int, rng: np.random.Generator) -> S
     later = state.chain[len(state.chain) // 2 :].reshape(-1, state.coords.shape[1])
     if len(later) > FIT_SAMPLES:
         later = later[rng.choice(len(later), FIT_SAMPLES, replace=False)]
-    return fit_student_mixture(later, n_components, rng)
+    pooled_weight = POOLED_WEIGHT if state.round else 0.0
+    return fit_student_mixture(later, n_components, rng, pooled_weight=pooled_weight)
 
 
 def rescue(state: RunState, log_prob: LogProb, rng: np.random.Generator) -> int:

@@ -22,6 +22,8 @@ Place = tuple[str | int, ...]
 
 # Aliases can make a file of ten lines stand for billions of values; no honest file needs as many.
 _MAX_VALUES: Final = 100_000
+# Line ends to YAML, but not to editors: line numbers would go astray.
+_NO_LINE_ENDS: Final = dict.fromkeys(map(ord, "\x85\u2028\u2029"), " ")
 _MERGE_TAG: Final = "tag:yaml.org,2002:merge"
 _OMAP_TAG: Final = "tag:yaml.org,2002:omap"
 
@@ -98,7 +100,7 @@ def parse_yaml(text: str, path: str, faults: list[Fault]) -> Document | None:
         returned, for duplicate keys.
     """
     try:
-        node = yaml.SafeLoader(text).get_single_node()
+        node = yaml.SafeLoader(text.translate(_NO_LINE_ENDS)).get_single_node()
     except yaml.YAMLError as error:
         faults.append(_yaml_fault(error, path))
         return None

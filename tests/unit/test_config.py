@@ -316,6 +316,12 @@ def test_config_that_is_no_mapping(folder, text):
     ]
 
 
+@pytest.mark.parametrize("character", ["\x85", "\u2028", "\u2029"])
+def test_line_ends_of_yaml_alone_do_not_shift_lines(folder, character):
+    text = FULL.replace("model:", f"# {character}\nmodel:", 1).replace("seed: 7", "sed: 7")
+    assert [line for line, _ in faults(folder, text)] == [20]
+
+
 def test_missing_config(folder):
     with pytest.raises(InputError, match=r"none\.yaml:1: no such file"):
         load_config("none.yaml")

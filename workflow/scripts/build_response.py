@@ -1,7 +1,6 @@
 """Validate the constraint files of an analysis and compute their response."""
 
 from fogline.jobs import job, settings_of
-from snakemake.script import snakemake
 
 with job(snakemake.log[0]) as log:
     from fogline.inputs import read_inputs

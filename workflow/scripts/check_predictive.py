@@ -1,7 +1,6 @@
 """Write the posterior predictive check of an analysis."""
 
 from fogline.jobs import job, settings_of
-from snakemake.script import snakemake
 
 with job(snakemake.log[0]):
     from fogline.deriving import write_predictive

@@ -1,7 +1,6 @@
 """Bring the ensembles of an analysis together: verdict, posterior, parameters."""
 
 from fogline.jobs import job, settings_of
-from snakemake.script import snakemake
 
 with job(snakemake.log[0]) as log:
     from fogline.chains import EnsembleResult

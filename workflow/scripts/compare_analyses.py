@@ -1,7 +1,6 @@
 """Compare the derived quantities of all analyses."""
 
 from fogline.jobs import job
-from snakemake.script import snakemake
 
 with job(snakemake.log[0]):
     from fogline.drawing import write_comparison

@@ -3,7 +3,6 @@
 from pathlib import Path
 
 from fogline.jobs import job, settings_of
-from snakemake.script import snakemake
 
 with job(snakemake.log[0]):
     from fogline.deriving import derive_tables

@@ -1,7 +1,6 @@
 """Render the tables of an analysis as pages for the report."""
 
 from fogline.jobs import job
-from snakemake.script import snakemake
 
 with job(snakemake.log[0]):
     from fogline.html import render_table

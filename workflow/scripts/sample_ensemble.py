@@ -1,7 +1,6 @@
 """Sample one ensemble of an analysis."""
 
 from fogline.jobs import job, settings_of
-from snakemake.script import snakemake
 
 with job(snakemake.log[0]) as log:
     from fogline.response_file import load_fit

@@ -6,7 +6,7 @@ import argparse
 import sys
 from typing import Any
 
-from fogline.commands.selection import add_selection, read_datasets, select
+from fogline.commands.selection import add_selection, select
 
 
 def add_to(commands: Any) -> None:
@@ -26,12 +26,12 @@ def add_to(commands: Any) -> None:
 def run(options: argparse.Namespace) -> None:
     """Write the predictions that the options ask for."""
     analysis, point = select(options)
-    datasets = read_datasets(analysis)
 
+    from fogline.inputs import read_inputs
     from fogline.predictions import predict_table
     from fogline.tables import write_table
 
-    table = predict_table(analysis, datasets, point)
+    table = predict_table(analysis, read_inputs(analysis), point)
     if options.output is None:
         table.write(sys.stdout, format="ascii.ecsv")
     else:

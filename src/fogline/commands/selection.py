@@ -11,7 +11,6 @@ if TYPE_CHECKING:
     import numpy as np
     from numpy.typing import NDArray
 
-    from fogline.datasets import DataSet
     from fogline.settings import AnalysisSettings
 
 DEFAULT_CONFIG = "config/config.yaml"
@@ -70,31 +69,3 @@ def select(options: argparse.Namespace) -> tuple[AnalysisSettings, NDArray[np.fl
         raise InputError(faults)
     analysis = study.analyses[options.analysis]
     return analysis, read_point(options.point, analysis.model)
-
-
-def read_datasets(analysis: AnalysisSettings) -> list[DataSet]:
-    """Return the data sets of an analysis, checked against its pivots.
-
-    Parameters
-    ----------
-    analysis : AnalysisSettings
-        Of a config.
-
-    Returns
-    -------
-    list of DataSet
-
-    Raises
-    ------
-    InputError
-        With every fault of all files.
-    """
-    from fogline.column_ranges import check_column_range
-    from fogline.constraint_files import read_constraint_files
-
-    datasets = read_constraint_files(analysis.datasets)
-    pivots = analysis.model.pivots
-    faults = [fault for dataset in datasets for fault in check_column_range(dataset, pivots)]
-    if faults:
-        raise InputError(faults)
-    return datasets

@@ -1,6 +1,7 @@
 """Figures. A new one is one module and one line of `FIGURES`."""
 
 from collections.abc import Callable
+from functools import partial
 from pathlib import Path
 from typing import Any, Final
 
@@ -51,13 +52,12 @@ def save(figure: Figure, path: str | Path) -> None:
     path : path-like
         Without suffix.
     """
-    for suffix, metadata in METADATA.items():
-
-        def write(temporary: Path, form: str = suffix, meta: dict[str, Any] = metadata) -> None:
-            with context(STYLE, after_reset=True):
-                figure.savefig(temporary, format=form, metadata=meta)
-
-        write_whole(f"{path}.{suffix}", write)
+    with context(STYLE, after_reset=True):
+        # Positions are found once, not anew for each form: that takes as long as the drawing.
+        figure.draw_without_rendering()
+        figure.set_layout_engine("none")
+        for form, metadata in METADATA.items():
+            write_whole(f"{path}.{form}", partial(figure.savefig, format=form, metadata=metadata))
 
 
 __all__ = ["FIGURES", "FigureInputs", "dataset_styles", "draw_comparison", "save"]

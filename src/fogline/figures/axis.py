@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from typing import Final
 
 import numpy as np
 from matplotlib.axes import Axes
+from matplotlib.axis import Axis
 from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 from numpy.typing import NDArray
 
+from fogline.datasets import DataSet
 from fogline.derived.base import DLA_LOG_NHI, LLS_LOG_NHI, SUB_DLA_LOG_NHI
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.style import SMALL
@@ -24,25 +27,34 @@ CLASSES: Final = (
 )
 """Classes of absorbers and their column ranges."""
 
+UNMEASURED_NOTE: Final = "Grey: no $f(N)$ data; prior and integral constraints only."
+"""What `shade_unmeasured` means."""
+
+PAST_DATA: Final = 0.05
+"""Room past data that lie outside the redshifts of the tables."""
+
 PLAIN_DECADES: Final = 2.5
 """Log axes of fewer decades than this carry plain numbers, others powers of ten."""
 
 
-def redshift_axis(axes: Axes, inputs: FigureInputs) -> None:
-    """Label the redshift axis and cut it to the redshifts of the tables."""
-    derive = inputs.fit.analysis.derive
+def redshift_axis(axes: Axes, inputs: FigureInputs, datasets: Iterable[DataSet] = ()) -> None:
+    """Label the redshift axis and fit it to the tables and to data beyond them."""
+    z = inputs.fit.analysis.derive.redshifts
     axes.set_xlabel("redshift $z$")
-    axes.set_xlim(derive.redshifts[0], derive.redshifts[-1])
+    ends = [(float(data.z_lo.min()), float(data.z_hi.max())) for data in datasets]
+    before = [lo - PAST_DATA for lo, _ in ends if lo < z[0]]
+    beyond = [hi + PAST_DATA for _, hi in ends if hi > z[-1]]
+    axes.set_xlim(min([z[0], *before]), max([z[-1], *beyond]))
 
 
-def plain_log_ticks(axes: Axes) -> None:
-    """Give a short logarithmic y axis plain numbers at 1, 2, 5."""
-    lo, hi = axes.get_ylim()
+def plain_log_ticks(axis: Axis) -> None:
+    """Give a short logarithmic axis plain numbers at 1, 2, 5."""
+    lo, hi = axis.get_view_interval()
     if np.log10(hi / lo) > PLAIN_DECADES:
         return
-    axes.yaxis.set_major_locator(LogLocator(subs=(1.0, 2.0, 5.0)))
-    axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
-    axes.yaxis.set_minor_formatter(NullFormatter())
+    axis.set_major_locator(LogLocator(subs=(1.0, 2.0, 5.0)))
+    axis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
+    axis.set_minor_formatter(NullFormatter())
 
 
 def column_axis(axes: Axes, inputs: FigureInputs) -> None:
@@ -57,7 +69,7 @@ def mark_classes(axes: Axes) -> None:
     for name, first, last in CLASSES:
         if not lo < first < hi:
             continue
-        axes.axvline(first, color="0.6", linewidth=0.6, linestyle=":", zorder=0.5)
+        axes.axvline(first, 0.0, 0.92, color="0.6", linewidth=0.6, linestyle=":", zorder=0.5)
         middle = 0.5 * (first + min(last, hi))
         axes.text(
             middle,

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, Final
 
 import numpy as np
 from astropy.table import Table
@@ -14,6 +14,10 @@ from fogline.figures.style import MODEL
 from fogline.tables import BAND_QUANTILES
 
 Array = NDArray[np.float64]
+
+
+OUTER_NOTE: Final = "Shaded: 68%, dotted: 95%."
+"""What ``outer="lines"`` means."""
 
 
 @dataclass(frozen=True)
@@ -65,7 +69,7 @@ def draw_band(
     colour: str = MODEL,
     line: str = "-",
     label: str = "",
-    with_95: bool = True,
+    outer: str = "fill",
     **kwargs: Any,
 ) -> None:
     """Draw a band: median line, 68% interval, and the 95% one fainter.
@@ -79,24 +83,21 @@ def draw_band(
         Colour of all, style of the median line.
     label : str
         For the legend; none if empty.
-    with_95 : bool
-        Whether the 95% interval is drawn.
+    outer : {"fill", "lines", "none"}
+        How the 95% interval is drawn; as lines where two bands overlap.
     **kwargs
         Passed to the median line.
     """
-    intervals = [("lo68", "hi68", 0.30)]
-    if with_95:
-        intervals.insert(0, ("lo95", "hi95", 0.15))
-    for lo, hi, alpha in intervals:
+    fills = {"lo95": 0.15, "lo68": 0.30} if outer == "fill" else {"lo68": 0.30}
+    for lo, alpha in fills.items():
+        lower = _within_reach(getattr(band, lo))
+        upper = _within_reach(getattr(band, lo.replace("lo", "hi")))
         axes.fill_between(
-            band.x,
-            _within_reach(getattr(band, lo)),
-            _within_reach(getattr(band, hi)),
-            color=colour,
-            alpha=alpha,
-            linewidth=0.0,
-            zorder=1.5,
+            band.x, lower, upper, color=colour, alpha=alpha, linewidth=0.0, zorder=1.5
         )
+    for name in ("lo95", "hi95") if outer == "lines" else ():
+        ends95 = _within_reach(getattr(band, name))
+        axes.plot(band.x, ends95, ":", color=colour, linewidth=0.7, zorder=1.8, label="_95")
     median = np.where(np.isfinite(band.median), band.median, np.nan)
     axes.plot(
         band.x, median, color=colour, linestyle=line, zorder=2, label=label or "_median", **kwargs

@@ -2,27 +2,30 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from typing import Final
 
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
+from matplotlib.ticker import MultipleLocator
 from numpy.typing import NDArray
 
 from fogline.datasets import DataSet
-from fogline.figures.axis import column_axis, shade_unmeasured
+from fogline.figures.axis import UNMEASURED_NOTE, column_axis, shade_unmeasured
 from fogline.figures.bands import Band, draw_band, rows_at, table_band
-from fogline.figures.conventions import other_cosmology
-from fogline.figures.data_points import ToDisplay, along_columns, draw_points, draw_predictions
+from fogline.figures.conventions import joined, other_cosmology
+from fogline.figures.data_points import ToDisplay, along_columns, draw_points
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.style import (
     ONE_COLUMN,
+    DataStyle,
     add_note,
     dataset_styles,
     new_figure,
-    readable,
     styled,
 )
+from fogline.quantities import Setting
 
 Array = NDArray[np.float64]
 
@@ -32,7 +35,7 @@ LARGEST_RESIDUAL: Final = 1.2
 """Half height of the residual panel at most [dex]."""
 
 RESIDUAL_NOTE: Final = (
-    "Lower panel: each bin over the prediction at its own redshift and in its own convention; "
+    "Lower panel: each bin against the prediction at its own redshift and in its own convention; "
     "band: uncertainty of the fit."
 )
 
@@ -58,9 +61,10 @@ def draw(inputs: FigureInputs) -> Figure:
     figure = new_figure(inputs, ONE_COLUMN, 4.4)
     main, residual = figure.subplots(2, sharex=True, height_ratios=[2.3, 1.0])
     column_axis(residual, inputs)
-    left_out = _draw_main(main, inputs, band, datasets, z=float(rows["z"][0]))
+    _draw_main(main, inputs, band, datasets, z=float(rows["z"][0]))
     _draw_residuals(residual, inputs, band, datasets)
-    add_note(figure, [RESIDUAL_NOTE, *left_out])
+    figure.align_ylabels()
+    add_note(figure, [UNMEASURED_NOTE, RESIDUAL_NOTE])
     return figure
 
 
@@ -81,9 +85,9 @@ def _redshift(inputs: FigureInputs, datasets: list[DataSet]) -> float:
 
 def _draw_main(
     axes: Axes, inputs: FigureInputs, band: Band, datasets: list[DataSet], z: float
-) -> list[str]:
+) -> None:
     styles = dataset_styles(inputs.fit)
-    shade_unmeasured(axes, inputs, "no $f(N)$ data: prior and\nintegral constraints only")
+    shade_unmeasured(axes, inputs)
     draw_band(axes, band, label=f"fit at $z = {z:g}$ (68%, 95%)")
     pivots = np.array(inputs.fit.setting.distribution.pivots)
     axes.plot(
@@ -95,27 +99,31 @@ def _draw_main(
         zorder=3,
         label="pivots",
     )
-    left_out = []
     for data in datasets:
-        if data.meta["per"] != "dX":
-            left_out.append(f"{readable(data.name)} (per d$z$)")
-            continue
-        points = along_columns(data, to_log_f(data))
-        difference = other_cosmology(data, inputs.fit.setting)
         style = styles[data.name]
-        label = f"{style.label}, {_redshifts(data)}" + (f", {difference}" if difference else "")
-        draw_points(axes, points, style, label=label)
-        if difference:
-            draw_predictions(axes, points.x, to_log_f(data)(inputs.predicted(data)), style)
+        label = f"{style.label}, {joined(_particulars(data, inputs.fit.setting))}"
+        if data.meta["per"] == "dX":
+            draw_points(axes, along_columns(data, to_log_f(data)), style, label=label)
+        else:
+            _draw_key(axes, style, label)
     axes.set_ylabel(F_LABEL)
+    axes.yaxis.set_major_locator(MultipleLocator(5.0))
     axes.set_ylim(band.lo68.min() - 1.0, band.hi68.max() + 1.0)
     axes.legend(loc="lower left")
-    return [f"Residuals only: {', '.join(left_out)}."] if left_out else []
 
 
-def _redshifts(data: DataSet) -> str:
+def _particulars(data: DataSet, setting: Setting) -> Iterator[str]:
+    """Yield what a label says of a data set beside its name."""
     lo, hi = data.z_lo.min(), data.z_hi.max()
-    return f"$z = {lo:.3g}$" + ("" if lo == hi else f"–${hi:.3g}$")
+    yield f"$z = {lo:.3g}$" + ("" if lo == hi else f"–${hi:.3g}$")
+    yield other_cosmology(data, setting)
+    if data.meta["per"] != "dX":
+        yield "per d$z$: below only"
+
+
+def _draw_key(axes: Axes, style: DataStyle, label: str) -> None:
+    """Put a data set into the legend that the panel itself can't show."""
+    axes.plot([], [], style.marker, color=style.colour, markersize=4.0, label=label)
 
 
 def _draw_residuals(axes: Axes, inputs: FigureInputs, band: Band, datasets: list[DataSet]) -> None:
@@ -131,7 +139,7 @@ def _draw_residuals(axes: Axes, inputs: FigureInputs, band: Band, datasets: list
         reach.append(float(ends[np.isfinite(ends)].max(initial=0.0)))
     half = min(1.15 * max(reach), LARGEST_RESIDUAL)
     axes.set_ylim(-half, half)
-    axes.set_ylabel("data / fit [dex]")
+    axes.set_ylabel(r"data $-$ fit [dex]")
 
 
 def _less(to_display: ToDisplay, predicted: Array) -> ToDisplay:

@@ -12,12 +12,12 @@ from matplotlib.ticker import MaxNLocator
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.style import MODEL, TWO_COLUMNS, WARNING, styled
 
-SMOOTHING: Final = 0.8
+SMOOTHING: Final = 1.2
 """Width of the smoothing in histogram bins."""
 
-BINS: Final = 24
+BINS: Final = 22
 
-TINY: Final = 5.0
+TINY: Final = 5.5
 """Print of tick labels [pt]: 13 panels share the page's width."""
 
 LEVELS: Final = tuple(1.0 - np.exp(-0.5 * np.array([1.0, 2.0]) ** 2))
@@ -53,7 +53,7 @@ def draw(inputs: FigureInputs) -> Figure:
         plot_density=False,
         fill_contours=True,
         max_n_ticks=3,
-        labelpad=0.28,
+        labelpad=0.2,
         contour_kwargs={"linewidths": 0.5},
         hist_kwargs={"linewidth": 0.8},
         fig=figure,
@@ -93,7 +93,7 @@ def _caption(figure: Figure, inputs: FigureInputs) -> None:
         r"$\log f_p$: $\log_{10}\,(f / \mathrm{cm}^2)$ at $N_\mathrm{HI} = 10^p\,\mathrm{cm}^{-2}$,"
         f" $z = {settings.reference_redshift:g}$\n"
         r"$\gamma_p$: exponent of $(1+z)$ at that column"
-        "\ncontours: 39% and 86% (1 and 2 sigma)"
+        "\ncontours: 39% and 86% (1σ and 2σ)"
     )
     figure.text(0.985, 0.975, text, ha="right", va="top", fontsize=9.0, linespacing=1.5)
     if not inputs.converged:

@@ -203,18 +203,17 @@ def draw_predictions(
     """
     lo, middle, hi = np.sort(predicted, axis=0)
     finite = np.isfinite(predicted).all(axis=0)
-    beside = _beside(axes)
     container = axes.errorbar(
         x[finite],
         middle[finite],
         yerr=[(middle - lo)[finite], (hi - middle)[finite]],
-        fmt="_",
+        fmt="o",
         color=style.colour,
-        markersize=5.0,
-        markeredgewidth=1.0,
-        elinewidth=2.4,
-        alpha=0.55,
-        transform=beside,
+        markersize=2.6,
+        markerfacecolor="white",
+        markeredgewidth=0.7,
+        elinewidth=2.0,
+        transform=_beside(axes),
         zorder=3.5,
         label=label,
     )

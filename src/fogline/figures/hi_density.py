@@ -17,7 +17,15 @@ from fogline.figures.conventions import joined, other_columns, other_cosmology
 from fogline.figures.data_points import ToDisplay
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.shown import Shown, convention_note, draw_along_z
-from fogline.figures.style import MODEL, ONE_COLUMN, SECOND_MODEL, add_note, new_figure, styled
+from fogline.figures.style import (
+    MODEL,
+    ONE_COLUMN,
+    SECOND_MODEL,
+    add_note,
+    legend_above,
+    new_figure,
+    styled,
+)
 
 UNIT: Final = 1e8
 """The axis is in this many solar masses per cubic Mpc."""
@@ -52,11 +60,13 @@ def draw(inputs: FigureInputs) -> Figure:
         )
         for data in inputs.of_quantity("hi_density")
     ]
-    figure = new_figure(inputs, ONE_COLUMN, 4.2)
+    figure = new_figure(inputs, ONE_COLUMN, 3.9)
     density, shares = figure.subplots(2, sharex=True, height_ratios=[2.2, 1.0])
     _draw_density(density, inputs, shown)
     _draw_shares(shares, inputs)
-    redshift_axis(shares, inputs)
+    redshift_axis(shares, inputs, inputs.of_quantity("hi_density"))
+    legend_above(figure, density)
+    figure.align_ylabels()
     add_note(figure, convention_note(shown))
     return figure
 
@@ -67,8 +77,7 @@ def _draw_density(axes: Axes, inputs: FigureInputs, shown: list[Shown]) -> None:
     draw_band(axes, band, label=rf"fit, $\log N = {lo:g}$–${hi:g}$ (68%, 95%)")
     draw_along_z(axes, inputs, shown)
     axes.set_ylabel(r"$\rho_\mathrm{HI}$ [$10^8\,M_\odot\,\mathrm{Mpc}^{-3}$]")
-    axes.set_ylim(0.0, 1.45 * axes.get_ylim()[1])
-    axes.legend(loc="upper left")
+    axes.set_ylim(bottom=0.0)
 
 
 def _draw_shares(axes: Axes, inputs: FigureInputs) -> None:
@@ -81,6 +90,7 @@ def _draw_shares(axes: Axes, inputs: FigureInputs) -> None:
         draw_band(axes, band, colour=colour, line=line, label=label)
     axes.set_ylabel(r"share of $\rho_\mathrm{HI}$")
     axes.set_ylim(0.0, 1.0)
+    axes.set_yticks([0.0, 0.5, 1.0])
     axes.legend(loc="center left")
 
 

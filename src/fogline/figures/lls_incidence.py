@@ -13,12 +13,20 @@ from fogline.atomic import log_nhi_at_tau
 from fogline.datasets import DataSet
 from fogline.derived.base import DLA_LOG_NHI, SUB_DLA_LOG_NHI
 from fogline.figures.axis import plain_log_ticks, redshift_axis
-from fogline.figures.bands import draw_band, table_band
+from fogline.figures.bands import OUTER_NOTE, draw_band, table_band
 from fogline.figures.conventions import joined, other_columns, other_cosmology, same_columns
 from fogline.figures.data_points import per_path
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.shown import Shown, convention_note, draw_along_z
-from fogline.figures.style import MODEL, ONE_COLUMN, SECOND_MODEL, add_note, new_figure, styled
+from fogline.figures.style import (
+    MODEL,
+    ONE_COLUMN,
+    SECOND_MODEL,
+    add_note,
+    legend_above,
+    new_figure,
+    styled,
+)
 
 PATHS: Final = {
     "dz": ("lz", r"$\ell(z)$ [per unit $z$]"),
@@ -71,13 +79,15 @@ def draw(inputs: FigureInputs) -> Figure:
         for path in PATHS
     }
     paths = [path for path in PATHS if by_path[path]] or ["dz"]
-    figure = new_figure(inputs, ONE_COLUMN, 0.5 + 2.3 * len(paths))
+    figure = new_figure(inputs, ONE_COLUMN, 0.5 + 1.9 * len(paths))
     panels = figure.subplots(len(paths), sharex=True, squeeze=False)[:, 0]
     shown = []
     for axes, path in zip(panels, paths, strict=True):
         shown += _draw_panel(axes, inputs, path, by_path[path])
-    redshift_axis(panels[-1], inputs)
-    add_note(figure, convention_note(shown))
+    redshift_axis(panels[-1], inputs, inputs.of_quantity("lls_incidence"))
+    legend_above(figure, *panels)
+    figure.align_ylabels()
+    add_note(figure, [OUTER_NOTE, *convention_note(shown)])
     return figure
 
 
@@ -90,14 +100,13 @@ def _draw_panel(
     prefix, label = PATHS[path]
     for c in drawn:
         band = table_band(inputs.tables["incidence"], "z", f"{prefix}_{c.name}")
-        draw_band(axes, band, colour=c.colour, line=c.line, label=c.label)
+        draw_band(axes, band, colour=c.colour, line=c.line, label=c.label, outer="lines")
     draw_along_z(axes, inputs, shown)
     axes.set_ylabel(label)
     # DLAs are ten times rarer than LLS: on a linear axis they would lie on its floor.
     if len(drawn) > len(ALWAYS):
         axes.set_yscale("log")
-        plain_log_ticks(axes)
-    axes.legend(loc="upper left")
+        plain_log_ticks(axes.yaxis)
     return shown
 
 

@@ -14,7 +14,7 @@ from fogline.figures.conventions import other_columns
 from fogline.figures.data_points import ToDisplay
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.shown import Shown, convention_note, draw_along_z
-from fogline.figures.style import ONE_COLUMN, add_note, new_figure, styled
+from fogline.figures.style import ONE_COLUMN, add_note, legend_above, new_figure, styled
 
 Array = NDArray[np.float64]
 
@@ -44,15 +44,15 @@ def draw(inputs: FigureInputs) -> Figure:
         )
         for data in inputs.of_quantity("lya_opacity")
     ]
-    figure = new_figure(inputs, ONE_COLUMN, 2.9)
+    figure = new_figure(inputs, ONE_COLUMN, 2.7)
     axes = figure.subplots()
     draw_band(axes, table_band(inputs.tables["lya_opacity"], "z"), label="fit (68%, 95%)")
     draw_along_z(axes, inputs, shown)
     axes.set_ylabel(r"Ly$\alpha$ effective optical depth $\tau_\mathrm{eff}$")
     axes.set_yscale("log")
-    redshift_axis(axes, inputs)
-    plain_log_ticks(axes)
-    axes.legend(loc="upper left")
+    redshift_axis(axes, inputs, inputs.of_quantity("lya_opacity"))
+    plain_log_ticks(axes.yaxis)
+    legend_above(figure, axes)
     columns = rf"Curve: $\log N = {setting.column_range[0]:g}$–${LLS_LOG_NHI:g}$."
     add_note(figure, [columns, *convention_note(shown)])
     return figure

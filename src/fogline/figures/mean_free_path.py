@@ -11,8 +11,8 @@ from matplotlib.figure import Figure
 from fogline.cosmology import Cosmology
 from fogline.datasets import DataSet
 from fogline.figures.axis import plain_log_ticks, redshift_axis
-from fogline.figures.bands import Band, draw_band, table_band
-from fogline.figures.conventions import other_cosmology
+from fogline.figures.bands import OUTER_NOTE, Band, draw_band, table_band
+from fogline.figures.conventions import joined, other_cosmology
 from fogline.figures.data_points import ToDisplay
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.shown import Shown, convention_note, draw_along_z
@@ -21,6 +21,7 @@ from fogline.figures.style import (
     ONE_COLUMN,
     SECOND_MODEL,
     add_note,
+    legend_above,
     new_figure,
     readable,
     styled,
@@ -46,45 +47,47 @@ def draw(inputs: FigureInputs) -> Figure:
     -------
     matplotlib.figure.Figure
     """
-    datasets = inputs.of_quantity("mean_free_path")
-    shown = [_shown(data, inputs) for data in datasets if data.meta["frame"] == "proper"]
-    figure = new_figure(inputs, ONE_COLUMN, 3.2)
+    shown = [_shown(data, inputs) for data in inputs.of_quantity("mean_free_path")]
+    figure = new_figure(inputs, ONE_COLUMN, 2.8)
     axes = figure.subplots()
     axes.set_yscale("log")
     for definition, (colour, line, label, _) in DEFINITIONS.items():
         band = table_band(inputs.tables["mean_free_path"], "z", definition)
-        draw_band(axes, band, colour=colour, line=line, label=label)
+        draw_band(axes, band, colour=colour, line=line, label=label, outer="lines")
     draw_along_z(axes, inputs, shown)
     axes.set_ylabel(r"mean free path at 912 Å [proper Mpc]")
-    redshift_axis(axes, inputs)
+    redshift_axis(axes, inputs, inputs.of_quantity("mean_free_path"))
     _limit_axis(axes, inputs, shown)
-    plain_log_ticks(axes)
-    axes.legend(loc="lower left")
-    add_note(figure, [*convention_note(shown), *_left_out(datasets)])
+    plain_log_ticks(axes.yaxis)
+    legend_above(figure, axes)
+    add_note(figure, [OUTER_NOTE, *convention_note(shown)])
     return figure
 
 
 def _shown(data: DataSet, inputs: FigureInputs) -> Shown:
     *_, filled = DEFINITIONS[data.meta["definition"]]
-    cosmology = data.cosmology or inputs.fit.setting.cosmology
+    setting = inputs.fit.setting
+    frame = "" if data.meta["frame"] == "proper" else "comoving$/(1+z)$"
     return Shown(
         data,
-        to_mpc(data, cosmology),
-        other_cosmology(data, inputs.fit.setting),
+        to_mpc(data, data.cosmology or setting.cosmology),
+        joined((frame, other_cosmology(data, setting))),
         filled=filled,
-        note=data.meta["definition"].replace("_", " "),
+        note=readable(data.meta["definition"]),
     )
 
 
 def to_mpc(data: DataSet, cosmology: Cosmology) -> ToDisplay:
-    """Return the map from a file's unit of length to Mpc, with the file's own h."""
-    factor = 1.0 / length_unit(data.unit, cosmology)
+    """Return the factor from a file's lengths to proper Mpc, with the file's own h.
+
+    Comoving lengths are divided by 1 + z of their row, which makes local ones proper. Over a unit
+    depth the factor falls towards the observer: such a number is to be held against its own
+    prediction, not against the curve.
+    """
+    factor = np.full(data.n_rows, 1.0 / length_unit(data.unit, cosmology))
+    if data.meta["frame"] == "comoving":
+        factor /= 1.0 + data.z
     return lambda length: length * factor
-
-
-def _left_out(datasets: list[DataSet]) -> list[str]:
-    names = [readable(data.name) for data in datasets if data.meta["frame"] != "proper"]
-    return [f"Not on this axis (comoving): {', '.join(names)}."] if names else []
 
 
 def _limit_axis(axes: Axes, inputs: FigureInputs, shown: list[Shown]) -> None:

@@ -4,7 +4,12 @@ from __future__ import annotations
 
 from matplotlib.figure import Figure
 
-from fogline.figures.axis import column_axis, mark_classes, shade_unmeasured
+from fogline.figures.axis import (
+    UNMEASURED_NOTE,
+    column_axis,
+    mark_classes,
+    shade_unmeasured,
+)
 from fogline.figures.bands import draw_band, rows_at, table_band
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.style import MODEL, ONE_COLUMN, SECOND_MODEL, add_note, new_figure, styled
@@ -32,11 +37,11 @@ def draw(inputs: FigureInputs) -> Figure:
         ("mass_share", r"H$\,$I mass", SECOND_MODEL, "--"),
     ):
         band = table_band(rows, "log_nhi", name)
-        draw_band(axes, band, colour=colour, line=line, label=label, with_95=False)
+        draw_band(axes, band, colour=colour, line=line, label=label, outer="none")
     column_axis(axes, inputs)
     axes.set_ylim(0.0, 1.12 * axes.get_ylim()[1])
     axes.set_ylabel("share per dex of column [dex$^{-1}$]")
     mark_classes(axes)
     axes.legend(loc="upper left", title=f"$z = {rows['z'][0]:g}$ (68%)", alignment="left")
-    add_note(figure, ["Grey: no $f(N)$ data; prior and integral constraints only."])
+    add_note(figure, [UNMEASURED_NOTE])
     return figure

@@ -10,7 +10,7 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from numpy.typing import NDArray
 
-from fogline.figures.axis import column_axis, shade_unmeasured
+from fogline.figures.axis import UNMEASURED_NOTE, column_axis, shade_unmeasured
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.style import COLOURS, MODEL, ONE_COLUMN, add_note, new_figure, styled
 from fogline.tables import bands
@@ -19,6 +19,11 @@ Array = NDArray[np.float64]
 
 SHIFT: Final = 0.09
 """Distance of prior and posterior from their column [dex]."""
+
+LINEAR_WIDTH: Final = 0.05
+"""Deviations below this [dex] are on a linear scale, larger ones on a logarithmic one."""
+
+TICKS: Final = (-10.0, -1.0, -0.1, 0.0, 0.1, 1.0, 10.0)
 
 PRIOR: Final = "0.55"
 POSTERIOR: Final = COLOURS[0]
@@ -66,12 +71,16 @@ def draw(inputs: FigureInputs) -> Figure:
         axes.set_ylabel(label)
     upper.legend(loc="upper right", ncols=2)
     _draw_ratios(ratio, log_f, exponents)
-    for axes in (upper, ratio):
+    upper.set_yscale("asinh", linear_width=LINEAR_WIDTH)
+    upper.set_yticks(TICKS, [f"${tick:g}$" for tick in TICKS])
+    upper.tick_params(axis="y", which="minor", left=False, right=False)
+    for axes in (upper, lower, ratio):
         shade_unmeasured(axes, inputs)
     column_axis(ratio, inputs)
     lo, hi = inputs.fit.setting.column_range
     ratio.set_xlim(lo - 0.3, hi + 0.3)
-    add_note(figure, ["Thick: 68%, thin: 95%. Grey columns: no $f(N)$ data."])
+    figure.align_ylabels()
+    add_note(figure, ["Thick: 68%, thin: 95%.", UNMEASURED_NOTE])
     return figure
 
 
@@ -105,6 +114,6 @@ def _draw_ratios(axes: Axes, log_f: Compared, exponents: Compared) -> None:
     )
     axes.axhline(1.0, color="0.5", linewidth=0.6)
     axes.set_yscale("log")
-    axes.set_ylim(top=2.0)
+    axes.set_ylim(0.3 * axes.get_ylim()[0], 2.0)
     axes.set_ylabel("posterior / prior\n68% width")
-    axes.legend(loc="lower right", ncols=2)
+    axes.legend(loc="lower left", ncols=2)

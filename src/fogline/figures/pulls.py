@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from textwrap import fill
 from typing import Any, Final
 
 import numpy as np
@@ -24,6 +25,9 @@ from fogline.figures.style import (
 )
 
 Array = NDArray[np.float64]
+
+LABEL_WIDTH: Final = 16
+"""Characters of a line of a data set's name."""
 
 SPREAD: Final = 0.34
 """Half height over which the rows of a data set are spread, in units of its strip."""
@@ -48,12 +52,18 @@ def draw(inputs: FigureInputs) -> Figure:
     axes = figure.subplots()
     for sigma, shade in ((2.0, "0.95"), (1.0, "0.88")):
         axes.axvspan(-sigma, sigma, facecolor=shade, edgecolor="none", zorder=0)
+    for strip in range(1, len(datasets)):
+        axes.axhline(strip - 0.5, color="0.8", linewidth=0.4, zorder=0.4)
     axes.axvline(0.0, color="0.5", linewidth=0.6, zorder=0.5)
     for strip, data in enumerate(datasets):
         rows = table[np.asarray(table["dataset"]) == data.name]
         _draw_strip(axes, strip, data, rows, styles[data.name])
         _print_p_value(axes, strip, table.meta["datasets"][data.name])
-    _dress(axes, [styles[data.name].label for data in datasets], np.asarray(table["pull"], float))
+    _dress(
+        axes,
+        [fill(styles[data.name].label, LABEL_WIDTH) for data in datasets],
+        np.asarray(table["pull"], float),
+    )
     add_note(figure, _notes(table, datasets))
     return figure
 

@@ -55,4 +55,7 @@ def convention_note(shown: Sequence[Shown]) -> list[str]:
     """Return the line that explains the bars beside data, where there are any."""
     if not any(item.difference for item in shown):
         return []
-    return ["Bars beside data: prediction (68%) in the data set's own convention, in parentheses."]
+    return [
+        "Small circles beside data: prediction (68%) in the data set's own convention "
+        "(in parentheses)."
+    ]

@@ -13,6 +13,8 @@ from dataclasses import dataclass
 from functools import wraps
 from typing import Any, Concatenate, Final, ParamSpec
 
+from matplotlib.artist import Artist
+from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.style import context
 
@@ -26,6 +28,9 @@ ONE_COLUMN: Final = 3.4
 
 TWO_COLUMNS: Final = 7.0
 """Width of a journal's page [in]."""
+
+LEGEND_LINE: Final = 0.145
+"""Height of one line of a legend [in]."""
 
 SMALL: Final = 7.0
 """Smallest print [pt]."""
@@ -79,7 +84,7 @@ STYLE: Final[dict[str, Any]] = {
 COLOURS: Final = ("#0072B2", "#D55E00", "#009E73", "#CC79A7", "#E69F00", "#56B4E9", "#000000")
 """Colours of data sets, in their order."""
 
-MARKERS: Final = ("o", "s", "^", "D", "v", "p", "P", "<", "X", "h", ">")
+MARKERS: Final = ("o", "s", "^", "D", "v", "p", "<", "h", ">", "d", "*")
 """Markers of data sets; as many as make every pair of colour and marker unique for 77 sets."""
 
 MODEL: Final = "#3c3c3c"
@@ -149,6 +154,23 @@ def new_figure(inputs: FigureInputs, width: float, height: float) -> Figure:
     if not inputs.converged:
         figure.suptitle("not converged", color=WARNING, weight="bold")
     return figure
+
+
+def legend_above(figure: Figure, *panels: Axes) -> None:
+    """Put the legend of some panels above them, where it hides no data; the figure grows by it.
+
+    Parameters
+    ----------
+    figure : Figure
+    *panels : Axes
+        The same label is listed once.
+    """
+    entries: dict[str, Artist] = {}
+    for axes in panels:
+        for handle, label in zip(*axes.get_legend_handles_labels(), strict=True):
+            entries.setdefault(label, handle)
+    figure.set_figheight(figure.get_figheight() + LEGEND_LINE * len(entries))
+    figure.legend(list(entries.values()), list(entries), loc="outside upper left")
 
 
 def add_note(figure: Figure, lines: list[str]) -> None:
