@@ -8,7 +8,7 @@ constants from astropy.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property, lru_cache
 from itertools import pairwise
 
@@ -91,6 +91,10 @@ class Truth:
     def theta(self):
         """The parameter vector."""
         return np.array([*self.log_f, *self.exponents])
+
+    def scaled(self, factor):
+        """Return the same shape with `factor` times as many absorbers."""
+        return replace(self, log_f=tuple(value + np.log10(factor) for value in self.log_f))
 
     @cached_property
     def _spline(self):

@@ -42,6 +42,20 @@ HEADLINES: Final = (
 """What is compared along redshift; log f is compared along columns."""
 
 
+DTYPES: Final = {
+    "analysis": "U64",
+    "reference": "U64",
+    "quantity": "U64",
+    "z": float,
+    "median": float,
+    "lo68": float,
+    "hi68": float,
+    "reference_median": float,
+    "shift_sigma": float,
+}
+"""Columns of the comparison."""
+
+
 @dataclass(frozen=True)
 class Value:
     """One quantity at one redshift in one analysis: median and 68% interval."""
@@ -54,8 +68,8 @@ class Value:
 
     @property
     def sigma(self) -> float:
-        """Half the width of the 68% interval."""
-        return 0.5 * (self.hi68 - self.lo68)
+        """Half the width of the 68% interval; infinite where it has no end."""
+        return 0.5 * (self.hi68 - self.lo68) if np.isfinite(self.hi68) else float("inf")
 
 
 def compare(results: Mapping[str, Mapping[str, Table]]) -> Table:
@@ -85,24 +99,10 @@ def compare(results: Mapping[str, Mapping[str, Table]]) -> Table:
     return table
 
 
-DTYPES: Final = {
-    "analysis": "U64",
-    "reference": "U64",
-    "quantity": "U64",
-    "z": float,
-    "median": float,
-    "lo68": float,
-    "hi68": float,
-    "reference_median": float,
-    "shift_sigma": float,
-}
-"""Columns of the comparison."""
-
-
 def _row(analysis: str, reference: str, value: Value, base: Value) -> tuple[object, ...]:
-    with np.errstate(invalid="ignore", divide="ignore"):
-        shift = np.subtract(value.median, base.median) / np.hypot(value.sigma, base.sigma)
-    shift = float(shift) if np.isfinite(shift) else float("nan")
+    # An error beyond reach would make every shift zero: nothing is said instead.
+    error = np.hypot(value.sigma, base.sigma)
+    shift = (value.median - base.median) / error if np.isfinite(error) else float("nan")
     numbers = (value.z, value.median, value.lo68, value.hi68, base.median, shift)
     return (analysis, reference, value.quantity, *numbers)
 

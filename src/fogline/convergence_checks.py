@@ -40,6 +40,10 @@ MIN_EFFICIENCY: Final = 1e-3
 OUTLYING: Final = 8.0
 """Deficit of a walker's mean ln posterior, in robust standard deviations of all walkers' means."""
 
+FAR_OUT: Final = 2.0
+"""The same in robust standard deviations of ln posterior itself: where walkers move slowly their
+means have heavy tails, and one that merely lingered is not stuck."""
+
 IMMOBILE: Final = 0.1
 """Share of the median walker's moves below which a walker is stuck."""
 
@@ -61,21 +65,26 @@ def _stuck(result: EnsembleResult) -> list[str]:
     moved = (np.diff(result.chain, axis=0) != 0.0).any(axis=2)
     share = moved.mean(axis=0)
     mean_ln_prob = result.ln_prob.mean(axis=0)
-    middle = np.median(mean_ln_prob)
-    # 1.4826 median absolute deviations are a standard deviation of a normal distribution.
-    spread = 1.4826 * np.median(np.abs(mean_ln_prob - middle))
+    deficit = np.median(mean_ln_prob) - mean_ln_prob
+    far = np.maximum(OUTLYING * _spread(mean_ln_prob), FAR_OUT * _spread(result.ln_prob))
     groups = {
         "hardly move": share <= IMMOBILE * np.median(share),
         f"rest at one place for {LONGEST_REST:.0%} of the chain": (
             longest_rests(moved) > LONGEST_REST * len(moved)
         ),
-        "stay far below the others in ln posterior": mean_ln_prob < middle - OUTLYING * spread,
+        "stay far below the others in ln posterior": deficit > far,
     }
     return [
         f"{_name(result)}: {where.sum()} of {len(where)} walkers {text} (first: {where.argmax()})"
         for text, where in groups.items()
         if where.any()
     ]
+
+
+def _spread(x: Array) -> float:
+    """Return a robust standard deviation."""
+    # 1.4826 median absolute deviations are a standard deviation of a normal distribution.
+    return float(1.4826 * np.median(np.abs(x - np.median(x))))
 
 
 def longest_rests(moved: NDArray[np.bool_]) -> NDArray[np.int64]:

@@ -14,7 +14,6 @@ from collections.abc import Sequence
 from typing import Final
 
 import numpy as np
-from emcee.autocorr import auto_window
 from numpy.typing import NDArray
 from scipy.fft import irfft, next_fast_len, rfft
 from scipy.special import ndtri
@@ -29,7 +28,7 @@ TAIL: Final = (0.05, 0.95)
 """Quantiles whose effective sample size is the tail's (Vehtari et al. 2021)."""
 
 WINDOW: Final = 5.0
-"""Autocorrelations are summed over this many autocorrelation times (emcee's default)."""
+"""Autocorrelations are summed over this many autocorrelation times, as emcee does."""
 
 
 def rank_normalise(x: Array) -> Array:
@@ -146,7 +145,10 @@ def _autocorrelation_time(x: Array) -> float:
     if covariance[0] <= 0.0:
         return float("inf")
     times = 2.0 * np.cumsum(covariance / covariance[0]) - 1.0
-    return float(max(times[auto_window(times, WINDOW)], 1.0))
+    enough = np.flatnonzero(np.arange(n) >= WINDOW * times)
+    # Where the sum never settles all of it counts; emcee's auto_window then takes its first term,
+    # and the slowest of chains would get the shortest of times.
+    return float(max(times[enough[0] if len(enough) else -1], 1.0))
 
 
 def growth(chain: Array, thin: int, n_lengths: int = 5) -> list[tuple[int, float]]:

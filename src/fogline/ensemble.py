@@ -1,8 +1,8 @@
 """One ensemble from its seed to its result: warm-up, frozen mixture, counted samples.
 
 The first warm-up round knows only stretch moves. After each round a Student-t mixture is fitted
-to the round's later half, and the next one mixes independence proposals from it with stretch
-moves. After the last the mixture is frozen and samples count. The run is a row of blocks; at the
+to the round's later half, and the next one mixes independence proposals from it and local moves
+along it with stretch moves. After the last the mixture is frozen and samples count. The run is a row of blocks; at the
 end of each the state in `fogline.checkpoint.RunState` is all that the rest depends on, so a run
 that is killed and resumed gives the same result bit for bit.
 """
@@ -34,6 +34,15 @@ __all__ = ["EnsembleResult", "run_ensemble"]
 
 Array = NDArray[np.float64]
 LogProb = Callable[[Array], Array]
+
+MOVES: Final = ("independence", "local", "stretch")
+"""Moves of a round; the first has stretch moves alone."""
+
+LOCAL_SHARE: Final = 0.7
+"""Share of local mixture moves in what independence proposals leave."""
+
+CHECKPOINT_SECONDS: Final = 1.0
+"""Least time between two checkpoints; which blocks leave one does not change the result."""
 
 
 def run_ensemble(
@@ -91,17 +100,6 @@ def _guarded(log_prob: LogProb) -> LogProb:
         return value
 
     return guarded
-
-
-MOVES: Final = ("independence", "local", "stretch")
-"""Moves of a round; the first has stretch moves alone."""
-
-
-LOCAL_SHARE: Final = 0.7
-"""Share of local mixture moves in what independence proposals leave."""
-
-CHECKPOINT_SECONDS: Final = 1.0
-"""Least time between two checkpoints; which blocks leave one does not change the result."""
 
 
 class _Keeper:

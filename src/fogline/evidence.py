@@ -201,7 +201,9 @@ def combine_evidence(results: Sequence[Importance]) -> Evidence:
     ln_z = np.array([r.ln_z for r in results])
     error = np.maximum([r.error for r in results], 1e-12)
     usable = np.isfinite(ln_z) & np.isfinite(error)
-    efficiency, k = min(r.efficiency for r in results), max(r.pareto_k for r in results)
+    # numpy's extremes keep a NaN, Python's lose it.
+    efficiency = float(np.min([r.efficiency for r in results]))
+    k = float(np.max([r.pareto_k for r in results]))
     if not usable.all():
         return Evidence(-np.inf, np.inf, efficiency, k, np.inf, np.inf)
     weight = 1.0 / error**2

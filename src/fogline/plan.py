@@ -72,7 +72,11 @@ def closing_words(analyses: Sequence[str], results: str | Path = "results") -> s
     """
     lines = []
     for name in analyses:
-        report = json.loads((Path(results) / name / "convergence.json").read_text())
+        path = Path(results) / name / "convergence.json"
+        # A run for a single file need not have come to the verdict.
+        if not path.exists():
+            continue
+        report = json.loads(path.read_text(encoding="utf-8"))
         state = "converged" if report["converged"] else "NOT CONVERGED"
         lines.append(f"{name}: {state}; see {Path(results) / name}/")
         lines += [f"  {reason}" for reason in report["reasons"]]

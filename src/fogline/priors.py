@@ -5,8 +5,8 @@ prior is the natural over-dispersed start. A scipy frozen distribution D gives �
 
 The spline's prior says what is known of its shape: log10 f at one pivot (the anchor), then the
 logarithmic slopes β = −d log f / d log N of the intervals, from the anchor outwards. As a ``walk``
-every slope is its neighbour's plus a step, as ``independent`` slopes each has the same prior; both
-are cut to β > 0, so that f falls with N. Where the data are silent this is what the posterior shows.
+every slope is its neighbour's plus a step, as ``independent`` slopes each has the same prior; both are
+cut to β > 0, so that f falls with N. Where the data are silent this is what the posterior shows.
 """
 
 from __future__ import annotations
@@ -29,6 +29,9 @@ Quantile = Callable[[Array, Array], Array]
 
 FARTHEST = 30.0
 """Coordinates beyond this many σ of the prior are taken as this many."""
+
+BELOW_ONE = float(np.nextafter(1.0, 0.0))
+"""Largest tail probability: at 1 itself an unbounded distribution has its quantile at infinity."""
 
 
 def unit_normal_map(spec: Distribution) -> Callable[[Array], Array]:
@@ -63,8 +66,12 @@ def cut_quantile(spec: Distribution) -> Quantile:
     if spec["dist"] == "norm":
         loc, scale = distribution.mean(), distribution.std()
         # sf and isf through ndtr and ndtri: this runs once per slope in the hot loop.
-        return lambda x, floor: loc - scale * ndtri(ndtr(-x) * ndtr((loc - floor) / scale))
-    return lambda x, floor: distribution.isf(ndtr(-x) * distribution.sf(floor))
+        return lambda x, floor: (
+            loc - scale * ndtri(np.minimum(ndtr(-x) * ndtr((loc - floor) / scale), BELOW_ONE))
+        )
+    return lambda x, floor: distribution.isf(
+        np.minimum(ndtr(-x) * distribution.sf(floor), BELOW_ONE)
+    )
 
 
 @dataclass(frozen=True)

@@ -21,7 +21,7 @@ from fogline.distribution import LN10
 
 Array = NDArray[np.float64]
 
-NODES_PER_PANEL = 3
+NODES_PER_PANEL = 4
 NODES_PER_DEX = 3.0
 REDSHIFT_NODES = 2
 REDSHIFT_NODES_PER_LN = 5.0

@@ -2,18 +2,24 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Mapping
 from dataclasses import replace
 from pathlib import Path
-from types import SimpleNamespace
 from typing import Any
 
+import matplotlib
 import numpy as np
 import pytest
 from astropy.table import Table
+from matplotlib.figure import Figure
+from matplotlib.lines import Line2D
+from matplotlib.patches import Rectangle
+from matplotlib.text import Text
 from numpy.testing import assert_allclose
 from scipy.optimize import least_squares
 
+from fogline import plan
 from fogline.chains import EnsembleResult
 from fogline.comparison import compare
 from fogline.constraint_files import read_constraint_files
@@ -22,12 +28,16 @@ from fogline.datasets import DataSet
 from fogline.derived import DERIVED_TABLES, Draws
 from fogline.evidence import Importance
 from fogline.figures import FIGURES, FigureInputs, dataset_styles, draw_comparison, save
+from fogline.figures.axis import unmeasured_columns
+from fogline.figures.column_distribution import to_log_f
+from fogline.figures.data_points import along_columns, along_z, poisson_interval
+from fogline.figures.lya_opacity import to_tau
 from fogline.mixture import StudentMixture
 from fogline.predictive import check_predictive, predictive_table
 from fogline.priors import Prior
 from fogline.response_file import Fit, build_fit
 from fogline.settings import AnalysisSettings, analysis_from_plain
-from fogline.tables import curve_table
+from fogline.tables import curve_table, read_table, write_table
 
 TRUTH = np.array(
     [-9.7, -11.65, -14.3, -16.5, -18.5, -20.15, -21.6, -22.6, -23.75, -26.5, 1.9, 2.0, 0.6]
@@ -74,10 +84,6 @@ PLAIN_ANALYSIS: dict[str, Any] = {
 
 OURS = {"H0": 70.0, "Om0": 0.3}
 OTHER = {"H0": 72.0, "Om0": 0.27}
-
-
-def error_columns(share: float, n: int) -> dict[str, Any]:
-    return {"err": np.full(n, share)}
 
 
 def study_files() -> dict[str, tuple[dict[str, Any], dict[str, Any], float, str]]:
@@ -221,7 +227,7 @@ def laplace(fit: Fit) -> tuple[np.ndarray, np.ndarray]:
     return found.x, np.linalg.inv(found.jac.T @ found.jac)
 
 
-def fake_ensembles(fit: Fit, rng: np.random.Generator, n_steps: int = 60) -> list[EnsembleResult]:
+def fake_ensembles(fit: Fit, rng: np.random.Generator, n_steps: int = 80) -> list[EnsembleResult]:
     """Return independent draws of the Laplace approximation, dressed as ensembles."""
     centre, covariance = laplace(fit)
     walkers, n_dim = fit.analysis.sampler.walkers, len(centre)
@@ -268,12 +274,415 @@ def fake_study(folder: Path, n_draws: int = 200, **derive: Any) -> FigureInputs:
     }
     check = check_predictive(fit.response, theta, rng)
     tables["predictive"] = predictive_table(fit.response.datasets, check)
+    # As the figures get them: a file turns empty strings into masked ones, for instance.
+    for name, table in tables.items():
+        write_table(table, folder / "tables" / f"{name}.ecsv")
+    tables = {name: read_table(folder / "tables" / f"{name}.ecsv") for name in tables}
     names = fit.setting.distribution.names
+    report = assess(ensembles, analysis.sampler, names, to_parameters=prior.to_parameters)
     return FigureInputs(
         fit=fit,
         tables=tables,
         theta=theta,
         prior_theta=prior.to_parameters(rng.standard_normal((4000, prior.n_dim))),
-        convergence=assess(ensembles, analysis.sampler, names).as_dict(),
+        convergence=json.loads(json.dumps(report.as_dict())),
         ensembles=ensembles,
     )
+
+
+@pytest.fixture(scope="module")
+def study(tmp_path_factory: pytest.TempPathFactory) -> FigureInputs:
+    return fake_study(tmp_path_factory.mktemp("study"))
+
+
+@pytest.fixture(scope="module")
+def figures(study: FigureInputs) -> dict[str, Figure]:
+    assert study.converged, study.convergence["reasons"]
+    return {name: draw(study) for name, draw in FIGURES.items()}
+
+
+def dataset(study: FigureInputs, name: str) -> DataSet:
+    return next(data for data in study.fit.response.datasets if data.name == name)
+
+
+def lines(figure: Figure, gid: str) -> list[Line2D]:
+    return [line for line in figure.findobj(Line2D) if line.get_gid() == gid]
+
+
+def drawn_at(figure: Figure, gid: str) -> np.ndarray:
+    """Return the positions of the one line with this mark, shape (n, 2)."""
+    (line,) = lines(figure, gid)
+    return np.asarray(line.get_xydata())
+
+
+def texts(figure: Figure) -> str:
+    return "\n".join(text.get_text() for text in figure.findobj(Text))
+
+
+def test_the_workflow_and_the_package_name_the_same_figures() -> None:
+    assert tuple(FIGURES) == plan.FIGURES
+
+
+@pytest.mark.parametrize("name", FIGURES)
+def test_every_figure_is_written_in_both_forms(
+    name: str, figures: dict[str, Figure], tmp_path: Path
+) -> None:
+    save(figures[name], tmp_path / name)
+    assert (tmp_path / f"{name}.png").read_bytes().startswith(b"\x89PNG")
+    assert (tmp_path / f"{name}.pdf").read_bytes().startswith(b"%PDF")
+    assert sorted(path.name for path in tmp_path.iterdir()) == [f"{name}.pdf", f"{name}.png"]
+
+
+def test_the_same_figure_gives_the_same_files(study: FigureInputs, tmp_path: Path) -> None:
+    for copy in ("a", "b"):
+        save(FIGURES["lya_opacity"](study), tmp_path / copy)
+    for form in ("pdf", "png"):
+        first, second = ((tmp_path / f"{copy}.{form}").read_bytes() for copy in ("a", "b"))
+        assert first == second
+
+
+def test_drawing_leaves_the_callers_settings_alone(study: FigureInputs) -> None:
+    with matplotlib.rc_context({"font.size": 31.0}):
+        before = dict(matplotlib.rcParams)
+        figure = FIGURES["lya_opacity"](study)
+        assert dict(matplotlib.rcParams) == before
+    assert figure.axes[0].xaxis.label.get_fontsize() < 12.0
+
+
+UNITS = {
+    "column_distribution": (["cm}^2", "[dex]"], "cm}^{-2}"),
+    "lya_opacity": (["tau_\\mathrm{eff}"], "redshift"),
+    "lls_incidence": (["per unit $z$", "per unit $X$"], "redshift"),
+    "mean_free_path": (["[proper Mpc]"], "redshift"),
+    "hi_density": (["M_\\odot\\,\\mathrm{Mpc}^{-3}", "share"], "redshift"),
+    "opacity_budget": (["dex$^{-1}$"], "cm}^{-2}"),
+}
+"""What the y labels of each figure's panels and its lowest x label must say."""
+
+
+@pytest.mark.parametrize("name", UNITS)
+def test_axes_carry_quantity_and_unit(name: str, figures: dict[str, Figure]) -> None:
+    wanted_y, wanted_x = UNITS[name]
+    panels = figures[name].axes
+    assert len(panels) == len(wanted_y)
+    for axes, wanted in zip(panels, wanted_y, strict=True):
+        assert wanted in axes.get_ylabel()
+    assert wanted_x in panels[-1].get_xlabel()
+
+
+@pytest.mark.parametrize("name", FIGURES)
+def test_print_is_large_enough(name: str, figures: dict[str, Figure]) -> None:
+    # The corner figure's tick labels are the exception: 13 panels share the width of a page.
+    smallest = 5.5 if name == "corner" else 7.0
+    sizes = [t.get_fontsize() for t in figures[name].findobj(Text) if t.get_text().strip()]
+    assert min(sizes) >= smallest
+
+
+def test_measurements_stand_where_the_file_has_them(
+    study: FigureInputs, figures: dict[str, Figure]
+) -> None:
+    data = dataset(study, "path_unit")
+    at = drawn_at(figures["mean_free_path"], "data:path unit")
+    assert_allclose(at, np.column_stack([data.z, data.observed]))
+
+
+def test_lengths_over_h_are_brought_to_mpc_with_the_files_own_h(
+    study: FigureInputs, figures: dict[str, Figure]
+) -> None:
+    data = dataset(study, "path_local")
+    at = drawn_at(figures["mean_free_path"], "data:path local")
+    assert_allclose(at[:, 1], data.observed / 0.72)  # x Mpc/h is x / h Mpc
+    predicted = drawn_at(figures["mean_free_path"], "prediction:path local")
+    assert_allclose(predicted[:, 1], study.predicted(data)[1] / 0.72)
+
+
+def test_mean_flux_is_shown_as_its_own_optical_depth(
+    study: FigureInputs, figures: dict[str, Figure]
+) -> None:
+    data = dataset(study, "forest_flux")
+    at = drawn_at(figures["lya_opacity"], "data:forest flux")
+    assert_allclose(at, np.column_stack([data.z, -np.log(data.observed)]))
+    assert r"forest flux ($-\ln F$)" in texts(figures["lya_opacity"])
+    points = along_z(data, to_tau(data))
+    assert_allclose(points.y_hi, -np.log(data.observed - data.err_lo))
+    assert_allclose(points.y_lo, -np.log(data.observed + data.err_hi))
+
+
+def test_an_upper_limit_of_the_flux_is_a_lower_one_of_the_depth(study: FigureInputs) -> None:
+    data = dataset(study, "forest_flux")
+    limited = replace(data, limit=np.array([1, -1, 0, 0, 0]))
+    assert along_z(limited, to_tau(limited)).limit.tolist() == [-1, 1, 0, 0, 0]
+    assert along_z(limited, lambda flux: flux).limit.tolist() == [1, -1, 0, 0, 0]
+
+
+def test_counts_are_shown_over_their_path(study: FigureInputs, figures: dict[str, Figure]) -> None:
+    data = dataset(study, "lls_thick")
+    at = drawn_at(figures["lls_incidence"], "data:lls thick")
+    assert_allclose(at, np.column_stack([data.z, data.observed / data.search_path]))
+
+
+def test_poisson_errors_are_those_of_tables() -> None:
+    # Gehrels 1986, ApJ 303, 336, tables 1 and 2, CL 0.8413 (from memory): n = 0, 1, 5.
+    lo, hi = poisson_interval(np.array([0.0, 1.0, 5.0]))
+    assert_allclose(hi, [1.841, 3.300, 8.382], atol=1e-3)
+    assert_allclose(lo, [0.0, 0.173, 2.840], atol=1e-3)
+
+
+def test_a_count_of_nothing_is_an_upper_limit(study: FigureInputs) -> None:
+    data = dataset(study, "dla_counts")
+    points = along_columns(data, to_log_f(data))
+    assert points.limit.tolist() == [0] * 6 + [1]
+    width = 10.0 ** data.log_nhi_hi[-1] - 10.0 ** data.log_nhi_lo[-1]
+    # 95%: exp(-mean) = 0.05
+    assert_allclose(points.y[-1], np.log10(-np.log(0.05) / (600.0 * width)))
+
+
+def test_log_f_and_residuals_stand_at_the_bins(
+    study: FigureInputs, figures: dict[str, Figure]
+) -> None:
+    data = dataset(study, "forest_columns")
+    main, residual = lines(figures["column_distribution"], "data:forest columns")
+    middle = 0.5 * (data.log_nhi_lo + data.log_nhi_hi)
+    assert_allclose(main.get_xydata(), np.column_stack([middle, data.observed]))
+    expected = data.observed - study.predicted(data)[1]
+    assert_allclose(residual.get_xydata(), np.column_stack([middle, expected]))
+
+
+def test_bins_per_redshift_are_held_against_their_own_prediction_only(
+    figures: dict[str, Figure],
+) -> None:
+    main, residual = figures["column_distribution"].axes
+    (line,) = lines(figures["column_distribution"], "data:sub dla counts")
+    assert line.axes is residual
+    assert "per d$z$: below only" in texts(figures["column_distribution"])
+    assert main.get_legend() is not None
+
+
+def test_gas_densities_lose_their_helium_and_nothing_else(
+    study: FigureInputs, figures: dict[str, Figure]
+) -> None:
+    data = dataset(study, "dla_density")
+    at = drawn_at(figures["hi_density"], "data:dla density")
+    # rho_crit = 3 H0^2 / (8 pi G) = 2.7754e11 h^2 Msun / Mpc3
+    expected = data.observed / 1.3 * 2.7754e11 * 0.72**2 / 1e8
+    assert_allclose(at[:, 1], expected, rtol=2e-4)
+
+
+@pytest.mark.parametrize(
+    ("figure", "name", "note"),
+    [
+        ("lya_opacity", "forest tau", r"$\log N = 12$–$19$"),
+        ("lls_incidence", "lls all", "$H_0 = 72$"),
+        ("mean_free_path", "path local", "$H_0 = 72$"),
+        ("hi_density", "dla density", r"$\log N \geq 20.3$"),
+    ],
+)
+def test_another_convention_is_named_and_has_its_own_prediction(
+    figure: str, name: str, note: str, study: FigureInputs, figures: dict[str, Figure]
+) -> None:
+    (label,) = [t for t in texts(figures[figure]).splitlines() if t.startswith(f"{name} (")]
+    assert note in label
+    data = dataset(study, name.replace(" ", "_"))
+    assert_allclose(drawn_at(figures[figure], f"prediction:{name}")[:, 0], data.z)
+
+
+@pytest.mark.parametrize(
+    ("figure", "name"), [("lya_opacity", "forest flux"), ("mean_free_path", "path unit")]
+)
+def test_the_curves_own_convention_needs_no_prediction(
+    figure: str, name: str, figures: dict[str, Figure]
+) -> None:
+    assert not lines(figures[figure], f"prediction:{name}")
+
+
+def test_definitions_of_the_free_path_differ_in_fill_and_line(figures: dict[str, Figure]) -> None:
+    figure = figures["mean_free_path"]
+    (local,), (unit) = lines(figure, "data:path local"), lines(figure, "data:path unit")
+    assert local.get_markerfacecolor() == local.get_color()
+    assert unit[0].get_markerfacecolor() == "white"
+    curves = {line.get_label(): line.get_linestyle() for line in figure.axes[0].lines}
+    assert curves["local: inverse opacity"] == "-"
+    assert curves["unit depth: flux falls to $1/e$"] == "--"
+
+
+def test_a_data_set_looks_the_same_in_every_figure(
+    study: FigureInputs, figures: dict[str, Figure]
+) -> None:
+    styles = dataset_styles(study.fit)
+    looks = {(style.colour, style.marker) for style in styles.values()}
+    assert len(looks) == len(styles) == len(study.fit.response.datasets)
+    for style in styles.values():
+        found = [
+            line
+            for figure in figures.values()
+            for line in lines(figure, f"data:{style.label}")
+            if len(line.get_xdata())
+        ]
+        assert len(found) >= 2  # its own figure and the pulls
+        assert {(line.get_color(), line.get_marker()) for line in found} == {
+            (style.colour, style.marker)
+        }
+
+
+def test_styles_stay_unique_for_many_data_sets(study: FigureInputs) -> None:
+    many = [replace(study.fit.response.datasets[0], name=f"set_{i}") for i in range(40)]
+    response = replace(study.fit.response, datasets=tuple(many))
+    styles = dataset_styles(replace(study.fit, response=response))
+    assert len({(style.colour, style.marker) for style in styles.values()}) == 40
+
+
+def test_pulls_are_those_of_the_table(study: FigureInputs, figures: dict[str, Figure]) -> None:
+    table = study.tables["predictive"]
+    drawn = [line for line in figures["pulls"].findobj(Line2D) if line.get_gid()]
+    assert_allclose(
+        np.sort(np.concatenate([line.get_xdata() for line in drawn])), np.sort(table["pull"])
+    )
+    p_value = table.meta["datasets"]["forest_flux"]["p_value"]
+    assert f"$p = {p_value:.3f}$" in texts(figures["pulls"])
+    assert "Red rings" not in texts(figures["pulls"])
+
+
+def test_rows_outside_the_replicates_are_ringed(study: FigureInputs) -> None:
+    table = study.tables["predictive"].copy()
+    table["flag"] = ["outside" if i == 3 else "" for i in range(len(table))]
+    figure = FIGURES["pulls"](replace(study, tables={**study.tables, "predictive": table}))
+    assert "Red rings" in texts(figure)
+    rings = [line for line in figure.findobj(Line2D) if line.get_markersize() == 8.0]
+    assert_allclose(np.concatenate([line.get_xdata() for line in rings]), [table["pull"][3]])
+
+
+def test_columns_without_bins_are_shaded(study: FigureInputs, figures: dict[str, Figure]) -> None:
+    gaps = unmeasured_columns(study)
+    assert_allclose(gaps, [(12.0, 12.5), (14.5, 19.0), (21.7, 22.5)])
+    for name in ("column_distribution", "opacity_budget", "prior_posterior"):
+        spans = [p for p in figures[name].axes[0].patches if isinstance(p, Rectangle)]
+        assert_allclose([(p.get_x(), p.get_x() + p.get_width()) for p in spans], gaps)
+        assert "prior and integral constraints only" in texts(figures[name]).replace("\n", " ")
+
+
+def test_corner_has_a_panel_for_every_pair(study: FigureInputs, figures: dict[str, Figure]) -> None:
+    n = study.theta.shape[1]
+    assert len(figures["corner"].axes) == n * n
+    assert len({axes.get_xlabel() for axes in figures["corner"].axes[-n:]}) == n
+
+
+def test_convergence_shows_the_numbers_of_the_report(
+    study: FigureInputs, figures: dict[str, Figure]
+) -> None:
+    bulk = drawn_at(figures["convergence"], "ess_bulk")
+    assert_allclose(bulk[:, 1], [p["ess_bulk"] for p in study.convergence["parameters"]])
+    title = figures["convergence"].get_suptitle()
+    assert title == "converged"
+
+
+def test_what_has_not_converged_says_so_on_every_figure(study: FigureInputs) -> None:
+    verdict = {**study.convergence, "converged": False, "reasons": ["R-hat is not below 1.01"]}
+    unconverged = replace(study, convergence=verdict)
+    for name, draw in FIGURES.items():
+        notes = [t for t in draw(unconverged).findobj(Text) if "not converged" in t.get_text()]
+        assert [note.get_color() for note in notes] == ["#c00000"], name
+        if name == "convergence":
+            assert "R-hat is not below 1.01" in notes[0].get_text()
+
+
+@pytest.mark.parametrize("name", ["hi_density", "mean_free_path"])
+def test_the_warning_stands_clear_of_the_legend(name: str, study: FigureInputs) -> None:
+    verdict = {**study.convergence, "converged": False}
+    figure = FIGURES[name](replace(study, convergence=verdict))
+    figure.draw_without_rendering()
+    (note,) = [t for t in figure.findobj(Text) if t.get_text() == "not converged"]
+    entries = [text.get_window_extent() for text in figure.legends[0].get_texts()]
+    assert not any(note.get_window_extent().overlaps(entry) for entry in entries)
+
+
+def test_a_report_with_holes_can_be_drawn(study: FigureInputs) -> None:
+    # JSON has null where R-hat or an autocorrelation time is infinite.
+    parameters = [dict(p) for p in study.convergence["parameters"]]
+    parameters[4]["rhat"] = None
+    autocorrelation = [dict(e) for e in study.convergence["autocorrelation"]]
+    autocorrelation[0]["time"] = [None] * len(autocorrelation[0]["time"])
+    verdict = {"converged": False, "reasons": [], "parameters": parameters}
+    verdict["autocorrelation"] = autocorrelation
+    figure = FIGURES["convergence"](replace(study, convergence=verdict))
+    assert r"$\log f_{17.5}$" in [axes.get_ylabel() for axes in figure.axes]
+    assert drawn_at(figure, "rhat:infinite")[:, 0].tolist() == [4.0]
+
+
+def test_no_data_of_a_quantity_leaves_its_curve(study: FigureInputs, tmp_path: Path) -> None:
+    response = study.fit.response
+    few = replace(
+        response, datasets=response.datasets[2:3], blocks=response.blocks[2:3]
+    )  # forest_columns
+    bare = replace(study, fit=replace(study.fit, response=few))
+    for name in ("lya_opacity", "lls_incidence", "mean_free_path", "hi_density"):
+        save(FIGURES[name](bare), tmp_path / name)
+
+
+def test_a_free_path_beyond_reach_runs_off_the_axis(study: FigureInputs, tmp_path: Path) -> None:
+    table = study.tables["mean_free_path"].copy()
+    for end in ("hi68", "hi95"):
+        table[f"unit_depth_{end}"][:2] = np.inf
+    table["unit_depth_median"][0] = np.inf
+    figure = FIGURES["mean_free_path"](
+        replace(study, tables={**study.tables, "mean_free_path": table})
+    )
+    save(figure, tmp_path / "path")
+    assert "beyond reach" in texts(figure)
+    assert np.isfinite(figure.axes[0].get_ylim()).all()
+
+
+def shifted(tables: Mapping[str, Table], sigmas: float) -> dict[str, Table]:
+    """Return tables with every median moved by a number of half 68% widths."""
+    out = {name: table.copy() for name, table in tables.items()}
+    for table in out.values():
+        for column in [c for c in table.colnames if c.endswith("median")]:
+            lo, hi = (column.replace("median", end) for end in ("lo68", "hi68"))
+            step = sigmas * 0.5 * (np.asarray(table[hi]) - np.asarray(table[lo]))
+            for name in (column, lo, hi):
+                table[name] = np.asarray(table[name]) + step
+    return out
+
+
+def test_comparison_states_shifts_in_units_of_both_errors(study: FigureInputs) -> None:
+    derived = {name: study.tables[name] for name in DERIVED_TABLES}
+    table = compare({"joint": derived, "same": derived, "moved": shifted(derived, 3.0)})
+    assert set(table["reference"]) == {"joint"}
+    same = table[table["analysis"] == "same"]
+    moved = table[table["analysis"] == "moved"]
+    assert_allclose(same["shift_sigma"], 0.0)
+    # Equal errors in quadrature are sqrt(2) of one.
+    assert_allclose(moved["shift_sigma"], 3.0 / np.sqrt(2.0))
+    assert {"tau_eff", "rho_hi", "lx_dla", "log_f[15]"} <= set(moved["quantity"])
+    assert "not a significance" in table.meta["definition"]
+
+
+def test_comparison_of_what_is_beyond_reach_has_no_shift(study: FigureInputs) -> None:
+    derived = {name: study.tables[name] for name in DERIVED_TABLES}
+    beyond = shifted(derived, 1.0)
+    beyond["mean_free_path"]["unit_depth_hi68"][:] = np.inf
+    table = compare({"joint": derived, "beyond": beyond})
+    rows = table[table["quantity"] == "mean_free_path_unit_depth"]
+    assert np.isnan(rows["shift_sigma"]).all()
+
+
+def test_comparison_figure_shows_every_analysis(study: FigureInputs, tmp_path: Path) -> None:
+    derived = {name: study.tables[name] for name in DERIVED_TABLES}
+    table = compare(
+        {"joint": derived, "low": shifted(derived, -1.0), "high": shifted(derived, 2.0)}
+    )
+    figure = draw_comparison(table)
+    save(figure, tmp_path / "shifts")
+    (axes,) = figure.axes
+    drawn = {line.get_label(): np.asarray(line.get_xdata()) for line in axes.lines}
+    for name in ("low", "high"):
+        rows = table[np.asarray(table["analysis"]) == name]
+        assert_allclose(drawn[name], rows["shift_sigma"])
+    assert r"[$\sigma$]" in axes.get_xlabel()
+    assert "The analyses share data" in texts(figure)
+
+
+def test_comparison_of_one_analysis_is_refused(study: FigureInputs) -> None:
+    table = compare({"joint": {name: study.tables[name] for name in DERIVED_TABLES}})
+    assert len(table) == 0
+    with pytest.raises(ValueError, match="nothing to compare"):
+        draw_comparison(table)

@@ -58,7 +58,7 @@ def draw(inputs: FigureInputs) -> Figure:
     z = _redshift(inputs, datasets)
     rows = rows_at(inputs.tables[QUANTITY], z)
     band = table_band(rows, "log_nhi")
-    figure = new_figure(inputs, ONE_COLUMN, 4.4)
+    figure = new_figure(inputs, ONE_COLUMN, 4.1)
     main, residual = figure.subplots(2, sharex=True, height_ratios=[2.3, 1.0])
     column_axis(residual, inputs)
     _draw_main(main, inputs, band, datasets, z=float(rows["z"][0]))

@@ -38,12 +38,19 @@ def draw_comparison(table: Table) -> Figure:
     Parameters
     ----------
     table : astropy.table.Table
-        As `fogline.comparison.compare` returns it, with at least one row.
+        As `fogline.comparison.compare` returns it.
 
     Returns
     -------
     matplotlib.figure.Figure
+
+    Raises
+    ------
+    ValueError
+        If the table has no rows.
     """
+    if not len(table):
+        raise ValueError("nothing to compare: the table has no rows")
     lines = list(dict.fromkeys(zip(table["quantity"], table["z"], strict=True)))
     analyses = list(dict.fromkeys(str(name) for name in table["analysis"]))
     figure = Figure(figsize=(ONE_COLUMN, 1.1 + 0.165 * len(lines)), layout="constrained")

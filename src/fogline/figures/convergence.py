@@ -62,7 +62,7 @@ def draw(inputs: FigureInputs) -> Figure:
 
 def _title(figure: Figure, inputs: FigureInputs) -> None:
     if inputs.converged:
-        figure.suptitle("converged")
+        figure.suptitle("converged", weight="bold")
         return
     reasons = [f"– {reason}" for reason in inputs.convergence.get("reasons", [])]
     lines = ["not converged", *(part for r in reasons for part in textwrap.wrap(r, 120))]
@@ -110,6 +110,10 @@ def _parameter_axis(axes: Axes, parameters: Sequence[dict[str, Any]]) -> Array:
     return x
 
 
+def _largest(values: Array, floor: float) -> float:
+    return float(np.fmax.reduce(values, initial=floor))
+
+
 def _mark_line(axes: Axes, y: float, text: str) -> None:
     """Draw a horizontal line with its meaning written on it."""
     axes.axhline(y, color=WARNING, linestyle="--", linewidth=0.9)
@@ -131,12 +135,14 @@ def _draw_rhat(axes: Axes, inputs: FigureInputs) -> None:
     excess = np.array([_number(p["rhat"]) for p in parameters]) - 1.0
     x = _parameter_axis(axes, parameters)
     axes.tick_params(axis="x", labelbottom=False)
+    top = 10.0 * _largest(excess, allowed - 1.0)
     # R-hat may fall below 1 by chance, and has no place on the logarithmic axis there.
-    excess = np.maximum(excess, LEAST_EXCESS)
-    axes.plot(x, excess, "o", color=COLOURS[0], gid="rhat")
+    axes.plot(x, np.maximum(excess, LEAST_EXCESS), "o", color=COLOURS[0], gid="rhat")
+    infinite = x[np.isnan(excess)]
+    axes.plot(infinite, np.full(len(infinite), 0.5 * top), "^", color=WARNING, gid="rhat:infinite")
     _mark_line(axes, allowed - 1.0, f"largest allowed: {allowed:g}")
     axes.set_yscale("log")
-    axes.set_ylim(0.5 * LEAST_EXCESS, 10.0 * max(allowed - 1.0, float(np.nanmax(excess))))
+    axes.set_ylim(0.5 * LEAST_EXCESS, top)
     axes.set_ylabel(r"$\hat{R} - 1$")
 
 
@@ -151,7 +157,7 @@ def _draw_sizes(axes: Axes, inputs: FigureInputs) -> None:
     ):
         sizes = np.array([_number(p[key]) for p in parameters])
         axes.plot(x, sizes, marker, color=colour, label=label, gid=key)
-        largest = max(largest, float(np.nanmax(sizes)))
+        largest = _largest(sizes, largest)
     _mark_line(axes, target, f"target: {target:g}")
     axes.set_yscale("log")
     axes.set_ylim(0.25 * target, 6.0 * largest)
@@ -164,7 +170,7 @@ def _draw_growth(axes: Axes, inputs: FigureInputs) -> None:
     for number, entry in enumerate(inputs.convergence["autocorrelation"]):
         times = np.array([_number(time) for time in entry["time"]])
         axes.plot(entry["steps"], times, marker="o", color=COLOURS[number % len(COLOURS)])
-        largest = max(largest, float(np.nanmax(times)))
+        largest = _largest(times, largest)
     axes.set_xscale("log")
     axes.set_yscale("log")
     ends = np.array(axes.get_xlim())

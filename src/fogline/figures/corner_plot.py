@@ -7,7 +7,7 @@ from typing import Final
 import corner
 import numpy as np
 from matplotlib.figure import Figure
-from matplotlib.ticker import MaxNLocator
+from matplotlib.ticker import FixedLocator, MaxNLocator
 
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.style import MODEL, TWO_COLUMNS, WARNING, styled
@@ -19,6 +19,9 @@ BINS: Final = 22
 
 TINY: Final = 5.5
 """Print of tick labels [pt]: 13 panels share the page's width."""
+
+EDGE: Final = 0.17
+"""Share of an axis at each end that carries no tick."""
 
 LEVELS: Final = tuple(1.0 - np.exp(-0.5 * np.array([1.0, 2.0]) ** 2))
 """Probability within one and two sigma of a two-dimensional normal."""
@@ -82,9 +85,21 @@ def _tidy(figure: Figure) -> None:
         for side in axes.spines.values():
             side.set_linewidth(0.4)
         for axis in (axes.xaxis, axes.yaxis):
-            if not isinstance(axis.get_major_locator(), MaxNLocator):
-                continue
-            axis.set_major_locator(MaxNLocator(2, prune="both"))
+            # Only axes to which corner gave ticks: the others are blank and stay so.
+            if isinstance(axis.get_major_locator(), MaxNLocator):
+                axis.set_major_locator(FixedLocator(_inner_ticks(*axis.get_view_interval())))
+
+
+def _inner_ticks(lo: float, hi: float) -> list[float]:
+    """Return round numbers inside an axis: at its ends they would run into the next panel's."""
+    margin = EDGE * (hi - lo)
+    inner: list[float] = []
+    for n_steps in range(3, 9):
+        ticks = MaxNLocator(n_steps).tick_values(lo, hi)
+        inner = [float(tick) for tick in ticks if lo + margin < tick < hi - margin]
+        if len(inner) >= 2:
+            break
+    return inner[:: max(len(inner) - 1, 1)]
 
 
 def _caption(figure: Figure, inputs: FigureInputs) -> None:

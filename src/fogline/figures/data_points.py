@@ -10,7 +10,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Any, Final
+from typing import Final
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -134,7 +134,7 @@ def _points(data: DataSet, to_display: ToDisplay, x_lo: Array, x: Array, x_hi: A
 
 
 def draw_points(
-    axes: Axes, points: Points, style: DataStyle, *, filled: bool = True, **kwargs: Any
+    axes: Axes, points: Points, style: DataStyle, *, filled: bool = True, label: str = ""
 ) -> None:
     """Draw data: symbols with errors, bins as horizontal bars, limits as arrows.
 
@@ -145,19 +145,14 @@ def draw_points(
     style : DataStyle
     filled : bool
         Whether symbols are filled; a figure may use it to tell definitions apart.
-    **kwargs
-        ``label`` other than the style's own.
+    label : str
+        Other than the style's own.
     """
-    label = kwargs.pop("label", style.label)
-    free = points.limit == 0
-    # An end at infinity (log of 0) would hide the whole bar: it runs off the axis instead.
-    below = np.where(free, np.minimum(points.y - points.y_lo, 1e3 * np.abs(points.y)), 0.0)
-    above = np.where(free, np.minimum(points.y_hi - points.y, 1e3 * np.abs(points.y)), 0.0)
     container = axes.errorbar(
         points.x,
         points.y,
         xerr=[points.x - points.x_lo, points.x_hi - points.x],
-        yerr=[below, above],
+        yerr=[_bar(points, points.y - points.y_lo), _bar(points, points.y_hi - points.y)],
         fmt=style.marker,
         color=style.colour,
         markerfacecolor=style.colour if filled else "white",
@@ -165,24 +160,36 @@ def draw_points(
         markersize=4.0,
         elinewidth=0.8,
         zorder=4,
-        label=label,
+        label=label or style.label,
     )
     container.lines[0].set_gid(f"data:{style.label}")
     for sign, arrow in ARROWS.items():
-        rows = points.limit == sign
-        if rows.any():
-            axes.plot(
-                points.x[rows],
-                points.y[rows],
-                linestyle="none",
-                marker=arrow,
-                markersize=ARROW_SIZE,
-                markeredgewidth=0.8,
-                color=style.colour,
-                fillstyle="none",
-                zorder=3.9,
-                label="_limit",
-            )
+        _draw_arrows(axes, points, points.limit == sign, arrow, style.colour)
+
+
+def _bar(points: Points, length: Array) -> Array:
+    """Return the lengths of error bars: none for limits, off the axis where there is no end."""
+    reach = 10.0 * np.abs(points.y) + 1.0
+    bounded = np.where(np.isfinite(length), np.minimum(length, reach), reach)
+    return np.where(points.limit == 0, bounded, 0.0)
+
+
+def _draw_arrows(
+    axes: Axes, points: Points, rows: NDArray[np.bool_], arrow: Path, colour: str
+) -> None:
+    if rows.any():
+        axes.plot(
+            points.x[rows],
+            points.y[rows],
+            linestyle="none",
+            marker=arrow,
+            markersize=ARROW_SIZE,
+            markeredgewidth=0.8,
+            color=colour,
+            fillstyle="none",
+            zorder=3.9,
+            label="_limit",
+        )
 
 
 def draw_predictions(

@@ -60,7 +60,7 @@ def draw(inputs: FigureInputs) -> Figure:
         )
         for data in inputs.of_quantity("hi_density")
     ]
-    figure = new_figure(inputs, ONE_COLUMN, 3.9)
+    figure = new_figure(inputs, ONE_COLUMN, 3.7)
     density, shares = figure.subplots(2, sharex=True, height_ratios=[2.2, 1.0])
     _draw_density(density, inputs, shown)
     _draw_shares(shares, inputs)

@@ -44,7 +44,7 @@ def draw(inputs: FigureInputs) -> Figure:
         )
         for data in inputs.of_quantity("lya_opacity")
     ]
-    figure = new_figure(inputs, ONE_COLUMN, 2.7)
+    figure = new_figure(inputs, ONE_COLUMN, 2.6)
     axes = figure.subplots()
     draw_band(axes, table_band(inputs.tables["lya_opacity"], "z"), label="fit (68%, 95%)")
     draw_along_z(axes, inputs, shown)

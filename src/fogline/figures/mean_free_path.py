@@ -48,7 +48,7 @@ def draw(inputs: FigureInputs) -> Figure:
     matplotlib.figure.Figure
     """
     shown = [_shown(data, inputs) for data in inputs.of_quantity("mean_free_path")]
-    figure = new_figure(inputs, ONE_COLUMN, 2.8)
+    figure = new_figure(inputs, ONE_COLUMN, 2.6)
     axes = figure.subplots()
     axes.set_yscale("log")
     for definition, (colour, line, label, _) in DEFINITIONS.items():
@@ -60,7 +60,7 @@ def draw(inputs: FigureInputs) -> Figure:
     _limit_axis(axes, inputs, shown)
     plain_log_ticks(axes.yaxis)
     legend_above(figure, axes)
-    add_note(figure, [OUTER_NOTE, *convention_note(shown)])
+    add_note(figure, [OUTER_NOTE, *_reach_note(inputs), *convention_note(shown)])
     return figure
 
 
@@ -88,6 +88,13 @@ def to_mpc(data: DataSet, cosmology: Cosmology) -> ToDisplay:
     if data.meta["frame"] == "comoving":
         factor /= 1.0 + data.z
     return lambda length: length * factor
+
+
+def _reach_note(inputs: FigureInputs) -> list[str]:
+    upper = np.asarray(inputs.tables["mean_free_path"]["unit_depth_hi95"], float)
+    if np.isfinite(upper).all():
+        return []
+    return ["Running off the top: beyond reach, the depth stays below 1 down to $z = 0$."]
 
 
 def _limit_axis(axes: Axes, inputs: FigureInputs, shown: list[Shown]) -> None:

@@ -29,7 +29,7 @@ def draw(inputs: FigureInputs) -> Figure:
     """
     reference = inputs.fit.setting.distribution.reference_redshift
     rows = rows_at(inputs.tables["opacity_budget"], reference)
-    figure = new_figure(inputs, ONE_COLUMN, 2.9)
+    figure = new_figure(inputs, ONE_COLUMN, 2.8)
     axes = figure.subplots()
     shade_unmeasured(axes, inputs)
     for name, label, colour, line in (

@@ -12,7 +12,15 @@ from numpy.typing import NDArray
 
 from fogline.figures.axis import UNMEASURED_NOTE, column_axis, shade_unmeasured
 from fogline.figures.inputs import FigureInputs
-from fogline.figures.style import COLOURS, MODEL, ONE_COLUMN, add_note, new_figure, styled
+from fogline.figures.style import (
+    COLOURS,
+    MODEL,
+    ONE_COLUMN,
+    add_note,
+    legend_above,
+    new_figure,
+    styled,
+)
 from fogline.tables import bands
 
 Array = NDArray[np.float64]
@@ -61,7 +69,7 @@ def draw(inputs: FigureInputs) -> Figure:
     middle = np.median(inputs.theta, axis=0)
     log_f = _compare(inputs, distribution.pivots, slice(n_pivots), middle[:n_pivots])
     exponents = _compare(inputs, distribution.evolution_pivots, slice(n_pivots, None), 0.0)
-    figure = new_figure(inputs, ONE_COLUMN, 5.0)
+    figure = new_figure(inputs, ONE_COLUMN, 4.6)
     upper, lower, ratio = figure.subplots(3, sharex=True, height_ratios=[1.4, 1.0, 1.0])
     for axes, compared, label in (
         (upper, log_f, "$\\log f$ $-$ posterior\nmedian [dex]"),
@@ -69,7 +77,6 @@ def draw(inputs: FigureInputs) -> Figure:
     ):
         _draw_intervals(axes, compared)
         axes.set_ylabel(label)
-    upper.legend(loc="upper right", ncols=2)
     _draw_ratios(ratio, log_f, exponents)
     upper.set_yscale("asinh", linear_width=LINEAR_WIDTH)
     upper.set_yticks(TICKS, [f"${tick:g}$" for tick in TICKS])
@@ -79,6 +86,7 @@ def draw(inputs: FigureInputs) -> Figure:
     column_axis(ratio, inputs)
     lo, hi = inputs.fit.setting.column_range
     ratio.set_xlim(lo - 0.3, hi + 0.3)
+    legend_above(figure, upper)
     figure.align_ylabels()
     add_note(figure, ["Thick: 68%, thin: 95%.", UNMEASURED_NOTE])
     return figure

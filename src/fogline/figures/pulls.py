@@ -84,8 +84,13 @@ def _draw_strip(axes: Axes, strip: int, data: DataSet, rows: Table, style: DataS
             gid=f"data:{style.label}",
             zorder=3,
         )
-    outside = np.asarray(rows["flag"], str) != ""
+    outside = _outside(rows)
     axes.plot(pulls[outside], y[outside], "o", color=WARNING, fillstyle="none", markersize=8.0)
+
+
+def _outside(rows: Table) -> NDArray[np.bool_]:
+    # Not `!= ""`: an empty cell comes back from a file as a masked one.
+    return np.array([str(flag) == "outside" for flag in rows["flag"]])
 
 
 def _print_p_value(axes: Axes, strip: int, summary: dict[str, Any]) -> None:
@@ -118,6 +123,6 @@ def _notes(table: Table, datasets: tuple[DataSet, ...]) -> list[str]:
     notes = ["Rows from top to bottom as in the file. $p$: posterior predictive, by data set."]
     if any((data.limit != 0).any() for data in datasets):
         notes.append("Open: limits, against the measurement behind them.")
-    if (np.asarray(table["flag"], str) != "").any():
+    if _outside(table).any():
         notes.append("Red rings: outside the replicates (two-sided $p < 0.0027$).")
     return notes

@@ -32,6 +32,9 @@ TWO_COLUMNS: Final = 7.0
 LEGEND_LINE: Final = 0.145
 """Height of one line of a legend [in]."""
 
+NOTE_LINE: Final = 0.11
+"""Height of one line of small print [in]."""
+
 SMALL: Final = 7.0
 """Smallest print [pt]."""
 
@@ -152,7 +155,8 @@ def new_figure(inputs: FigureInputs, width: float, height: float) -> Figure:
     """
     figure = Figure(figsize=(width, height), layout="constrained")
     if not inputs.converged:
-        figure.suptitle("not converged", color=WARNING, weight="bold")
+        # At the right: a legend above the panels begins at the left of the same line.
+        figure.suptitle("not converged", x=0.98, ha="right", color=WARNING, weight="bold")
     return figure
 
 
@@ -174,9 +178,10 @@ def legend_above(figure: Figure, *panels: Axes) -> None:
 
 
 def add_note(figure: Figure, lines: list[str]) -> None:
-    """Write small print below a figure, wrapped to its width; nothing for no lines."""
+    """Write small print below a figure, wrapped to its width; the figure grows by it."""
     per_inch = 19  # characters of `SMALL` print
     n_characters = int(per_inch * figure.get_figwidth())
     wrapped = [part for line in lines for part in textwrap.wrap(line, n_characters)]
     if wrapped:
+        figure.set_figheight(figure.get_figheight() + NOTE_LINE * len(wrapped))
         figure.supxlabel("\n".join(wrapped), x=0.02, ha="left", color="0.25", linespacing=1.1)
