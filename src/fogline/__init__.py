@@ -40,7 +40,7 @@ _HOME = {
     "write_derived": "fogline.derived",
 }
 
-__all__ = sorted(_HOME)  # noqa: PLE0605
+__all__ = sorted(_HOME)
 
 
 def __getattr__(name: str) -> Any:

@@ -1,8 +1,8 @@
 """Constraint files: read, validated completely, and turned into `DataSet`s.
 
 A constraint file is ECSV (astropy's Enhanced CSV) with the measurements of one quantity: numbers
-with their units in the columns, conventions in ``meta``. `fogline.quantities.file_specs` says
-what each quantity's file must hold. Everything wrong with a file is found at once and reported
+with their units in the columns, conventions in ``meta``. The `spec` of its quantity says what a
+file must hold. Everything wrong with a file is found at once and reported
 with its line; what passes is trusted from here on.
 """
 

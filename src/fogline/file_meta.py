@@ -8,7 +8,7 @@ from typing import Any
 from fogline.cosmology_keys import cosmology_faults, is_number, text_number_hint
 from fogline.ecsv_lines import RawTable
 from fogline.faults import Fault, nearest
-from fogline.quantities.file_specs import FILE_SPECS
+from fogline.quantities import FILE_SPECS
 from fogline.quantities.spec import COMMON_META, FileSpec, MetaKey
 
 

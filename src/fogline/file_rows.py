@@ -11,8 +11,7 @@ from numpy.typing import NDArray
 
 from fogline.ecsv_lines import RawTable
 from fogline.faults import Fault
-from fogline.quantities.file_specs import LOG_NHI_RANGE
-from fogline.quantities.spec import FileSpec, ValueColumn, interval
+from fogline.quantities.spec import LOG_NHI_RANGE, FileSpec, ValueColumn, interval
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]

@@ -20,8 +20,8 @@ FAULT_STATUS = 2
 def job(log: str | Path) -> Iterator[TextIO]:
     """Run a job with a log file.
 
-    A user's faults go to the log and stderr, one line each, and end the job with status 2; any other
-    error leaves its traceback in the log and is raised.
+    A user's faults go to the log and stderr, one line each, and end the job with status 2; any
+    other error leaves its traceback in the log and is raised.
 
     Parameters
     ----------

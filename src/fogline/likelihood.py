@@ -6,9 +6,10 @@ lies (above the datum: ``err_hi``)::
     p(y | m) = 2 / [√(2π) (σ_lo + σ_hi)] exp[−(m − y)² / (2σ²)]
 
 ``likelihood: lognormal`` takes the same density in ln y, with σ/y as errors (and the Jacobian 1/y).
-Counts are Poisson. A limit at confidence C states that a true value equal to the limit L would have
-given a lower (higher) measurement than the one made in only 1 − C of all trials; the row contributes
-the probability of a measurement at or beyond the one made, not a datum with a large error::
+Counts are Poisson. A limit at confidence C states that a true value equal to the limit L would
+have given a lower (higher) measurement than the one made in only 1 − C of all trials; the row
+contributes the probability of a measurement at or beyond the one made, not a datum with a large
+error::
 
     upper: P(y ≤ y_made | m) = Φ[(L − m)/σ − z_C],   lower: Φ[(m − L)/σ − z_C],   z_C = Φ⁻¹(C)
 

@@ -78,9 +78,7 @@ def _row_groups(fit: Fit, theta: Array, rng: np.random.Generator) -> dict[str, d
     for data, rows in zip(fit.response.datasets, fit.response.slices, strict=True):
         shape = (*theta.shape[:2], data.n_rows)
         groups["log_likelihood"][data.name] = ln_rows[:, rows].reshape(shape).astype(np.float32)
-        groups["posterior_predictive"][data.name] = (
-            drawn[:, rows].reshape(shape).astype(np.float32)
-        )
+        groups["posterior_predictive"][data.name] = drawn[:, rows].reshape(shape).astype(np.float32)
         groups["observed_data"][data.name] = data.observed
     return groups
 

@@ -1,4 +1,4 @@
-"""Posterior predictive check: does the fit, if true, produce data like those that were seen?
+"""Posterior predictive check: whether the fit, if true, makes data like those that were seen.
 
 For every posterior draw one replicate of every row is drawn from the row's own likelihood. Rows:
 
@@ -8,8 +8,8 @@ For every posterior draw one replicate of every row is drawn from the row's own 
 
 Data sets: the discrepancy T = Σ pull², each draw compared with its own prediction, and
 p = P(T_rep ≥ T_obs). These p-values use the data twice, once to fit and once to judge, and so lean
-towards 0.5: a small one is serious, an inconspicuous one is weak evidence (Gelman, Meng & Stern 1996,
-Statistica Sinica 6, 733).
+towards 0.5: a small one is serious, an inconspicuous one is weak evidence (Gelman, Meng & Stern
+1996, Statistica Sinica 6, 733).
 """
 
 from __future__ import annotations

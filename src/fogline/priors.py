@@ -5,8 +5,8 @@ prior is the natural over-dispersed start. A scipy frozen distribution D gives �
 
 The spline's prior says what is known of its shape: log10 f at one pivot (the anchor), then the
 logarithmic slopes β = −d log f / d log N of the intervals, from the anchor outwards. As a ``walk``
-every slope is its neighbour's plus a step, as ``independent`` slopes each has the same prior; both are
-cut to β > 0, so that f falls with N. Where the data are silent this is what the posterior shows.
+every slope is its neighbour's plus a step, as ``independent`` slopes each has the same prior; both
+are cut to β > 0, so that f falls with N. Where the data are silent, the posterior shows the prior.
 """
 
 from __future__ import annotations

@@ -94,8 +94,8 @@ def redshift_nodes(z_lo: float, z_hi: float, cosmology: Cosmology) -> tuple[Arra
     """
     if z_lo == z_hi:
         return np.array([z_lo]), np.ones(1)
-    # n nodes integrate (1+z)^γ over a bin of width w in ln(1+z) with an error near (γ w)^(2n) / (2n)!;
-    # this keeps exponents of 8, and the flux of a forest as thick as τ = 2, below 3e-5.
+    # n nodes integrate (1+z)^γ over a bin of width w in ln(1+z) with an error near
+    # (γ w)^(2n) / (2n)!; this keeps exponents of 8, and the flux at τ = 2, below 3e-5.
     n_nodes = REDSHIFT_NODES + math.ceil(REDSHIFT_NODES_PER_LN * math.log((1 + z_hi) / (1 + z_lo)))
     z, weights = interval_nodes(z_lo, z_hi, n_nodes)
     weights = weights * cosmology.dx_dz(z)

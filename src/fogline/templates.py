@@ -10,7 +10,7 @@ import textwrap
 from collections.abc import Iterator
 
 from fogline.cosmology_keys import float_text
-from fogline.quantities.file_specs import FILE_SPECS
+from fogline.quantities import FILE_SPECS
 from fogline.quantities.spec import COMMON_META, FileSpec, MetaKey, ValueColumn
 
 _WIDTH = 92

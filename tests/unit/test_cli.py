@@ -17,7 +17,7 @@ from fogline.cli import main
 from fogline.config import load_config
 from fogline.faults import InputError
 from fogline.points import read_point
-from fogline.quantities.file_specs import FILE_SPECS
+from fogline.quantities import FILE_SPECS
 from fogline.templates import template
 
 CONFIG = """\

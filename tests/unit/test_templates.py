@@ -9,7 +9,7 @@ import pytest
 from astropy.table import Table
 
 from fogline.constraint_files import read_constraint_file
-from fogline.quantities.file_specs import FILE_SPECS
+from fogline.quantities import FILE_SPECS
 from fogline.quantities.spec import COMMON_META
 from fogline.templates import template
 

@@ -30,7 +30,7 @@ def add_to(commands: Any) -> None:
 def run(options: argparse.Namespace) -> None:
     """Print the template of ``options.quantity``, or the quantities that there are."""
     # Here, not above: the quantities bring scipy and astropy, which --help does not need.
-    from fogline.quantities.file_specs import FILE_SPECS
+    from fogline.quantities import FILE_SPECS
     from fogline.templates import template
 
     if options.quantity is None:

@@ -26,9 +26,7 @@ DERIVED_TABLES: Final[dict[str, DerivedTable]] = {
 """Every derived table by its name."""
 
 
-def write_derived(
-    draws: Draws, directory: str | Path, /, *, with_bands: bool, **meta: Any
-) -> None:
+def write_derived(draws: Draws, directory: str | Path, /, *, with_bands: bool, **meta: Any) -> None:
     """Write every derived table.
 
     Parameters

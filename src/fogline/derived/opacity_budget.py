@@ -22,9 +22,9 @@ class OpacityBudgetTable:
 
     name = "opacity_budget"
     definition = (
-        "opacity_per_dex: contribution of each dex of column to the opacity at 912 A (inverse proper "
-        "length); opacity_share, mass_share: the same and the H I mass per dex over their totals "
-        "between the first and the last pivot."
+        "opacity_per_dex: contribution of each dex of column to the opacity at 912 A (inverse "
+        "proper length); opacity_share, mass_share: the same and the H I mass per dex over their "
+        "totals between the first and the last pivot."
     )
 
     def keys(self, draws: Draws) -> Mapping[str, tuple[Array, str, str]]:

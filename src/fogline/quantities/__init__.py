@@ -8,6 +8,7 @@ from fogline.quantities.hi_density import HiDensity
 from fogline.quantities.lls_incidence import LlsIncidence
 from fogline.quantities.lya_opacity import LyaOpacity
 from fogline.quantities.mean_free_path import MeanFreePath
+from fogline.quantities.spec import FileSpec
 
 QUANTITIES: Final[dict[str, Quantity]] = {
     quantity.spec.quantity: quantity
@@ -21,4 +22,7 @@ QUANTITIES: Final[dict[str, Quantity]] = {
 }
 """Every quantity by its name in constraint files."""
 
-__all__ = ["QUANTITIES", "Block", "Quantity", "Setting"]
+FILE_SPECS: Final[dict[str, FileSpec]] = {name: q.spec for name, q in QUANTITIES.items()}
+"""What the constraint file of each quantity must hold."""
+
+__all__ = ["FILE_SPECS", "QUANTITIES", "Block", "Quantity", "Setting"]

@@ -9,13 +9,13 @@ of percent. ``per: dz`` means d²n/dN/dz instead of d²n/dN/dX.
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import Final
 
 import numpy as np
 from numpy.typing import NDArray
 
 from fogline.datasets import DataSet
 from fogline.quadrature import column_nodes
-from fogline.quantities import file_specs
 from fogline.quantities.base import (
     Block,
     Setting,
@@ -24,14 +24,38 @@ from fogline.quantities.base import (
     path_ratio,
     row_redshifts,
 )
+from fogline.quantities.spec import PER, FileSpec, ValueColumn
 
 Array = NDArray[np.float64]
+
+LOG_F_RANGE: Final = (-60.0, 0.0)
+"""Values of log10 f [dex of cm^2] that a file may hold: generous, to catch f for log f."""
+
+SPEC: Final = FileSpec(
+    quantity="column_distribution",
+    description="Column-density distribution f(N): absorbers per unit column and path, in bins.",
+    meta=(PER,),
+    values={
+        "": ValueColumn(
+            name="log_f",
+            logarithmic=True,
+            minimum=LOG_F_RANGE[0],
+            maximum=LOG_F_RANGE[1],
+            example=-21.7,
+            example_err=0.1,
+            help="log10 of f [cm^2] averaged over the bin, errors in dex",
+        )
+    },
+    counts=True,
+    column_bins=True,
+    cosmology_when={"per": ("dX",)},
+)
 
 
 class ColumnDistributionBins:
     """Bin averages of f(N, X), or numbers of absorbers in bins of column density."""
 
-    spec = file_specs.COLUMN_DISTRIBUTION
+    spec = SPEC
     label = r"$\log_{10} f(N_\mathrm{HI}, X)$ [cm$^2$]"
 
     def respond(self, data: DataSet, setting: Setting) -> Block:

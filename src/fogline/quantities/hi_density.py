@@ -2,13 +2,14 @@
 
     ρ_HI = (m_H H0 / c) ∫ N f dN  (comoving),    Ω_HI = ρ_HI / ρ_crit(z=0),    Ω_gas = Ω_HI · μ
 
-H0, ρ_crit and dX/dz are those of the file's cosmology; the helium factor μ is the file's meta, since
-authors use 1.3 or 1/0.76. Without ``log_nhi_max`` the integral ends at the last pivot.
+H0, ρ_crit and dX/dz are those of the file's cosmology; the helium factor μ is the file's meta,
+since authors use 1.3 or 1/0.76. Without ``log_nhi_max`` the integral ends at the last pivot.
 """
 
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import Final
 
 import numpy as np
 from astropy import units
@@ -18,7 +19,6 @@ from fogline.constants import C_CGS, M_HYDROGEN, MPC_CM, SOLAR_MASS
 from fogline.cosmology import Cosmology
 from fogline.datasets import DataSet
 from fogline.quadrature import column_nodes
-from fogline.quantities import file_specs
 from fogline.quantities.base import (
     Block,
     Setting,
@@ -28,8 +28,52 @@ from fogline.quantities.base import (
     row_redshifts,
 )
 from fogline.quantities.lls_incidence import column_limits
+from fogline.quantities.spec import FileSpec, MetaKey, ValueColumn, column_key
 
 Array = NDArray[np.float64]
+
+SPEC: Final = FileSpec(
+    quantity="hi_density",
+    description="Cosmic density of neutral hydrogen.",
+    meta=(
+        MetaKey(
+            "form",
+            "choice",
+            "rho_hi (comoving mass density), omega_hi (in units of today's critical density), "
+            "omega_gas (omega_hi times helium_factor)",
+            choices=("rho_hi", "omega_hi", "omega_gas"),
+            example="omega_hi",
+        ),
+        MetaKey(
+            "helium_factor",
+            "number",
+            "mass of all gas over that of its hydrogen (form omega_gas only)",
+            minimum=1.0,
+            maximum=2.0,
+            required_when={"form": ("omega_gas",)},
+            example=1.3,
+        ),
+        column_key("min", "lowest column counted", True, 20.3),
+        column_key("max", "highest column counted", False, 22.0),
+    ),
+    values={
+        "rho_hi": ValueColumn(
+            units=("Msun / Mpc3",),
+            example=9.0e7,
+            example_err=1.0e7,
+            example_unit="Msun / Mpc3",
+            help="comoving mass density",
+        ),
+        "omega_hi": ValueColumn(
+            maximum=1.0, example=6.6e-4, example_err=0.7e-4, help="density over the critical one"
+        ),
+        "omega_gas": ValueColumn(
+            maximum=1.0, example=8.6e-4, example_err=0.9e-4, help="density over the critical one"
+        ),
+    },
+    form_key="form",
+    cosmology_when={},
+)
 
 
 def mass_per_moment(cosmology: Cosmology) -> float:
@@ -41,7 +85,7 @@ def mass_per_moment(cosmology: Cosmology) -> float:
 class HiDensity:
     """Density of neutral hydrogen locked in absorbers of a column range."""
 
-    spec = file_specs.HI_DENSITY
+    spec = SPEC
     label = r"$\rho_\mathrm{HI}$ [$M_\odot\,\mathrm{Mpc}^{-3}$]"
 
     def respond(self, data: DataSet, setting: Setting) -> Block:

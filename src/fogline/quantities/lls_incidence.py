@@ -9,6 +9,7 @@ pivot, beyond which f is undefined. In a redshift bin ℓ is averaged over absor
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import Final
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,7 +17,6 @@ from numpy.typing import NDArray
 from fogline.atomic import log_nhi_at_tau
 from fogline.datasets import DataSet
 from fogline.quadrature import column_nodes
-from fogline.quantities import file_specs
 from fogline.quantities.base import (
     Block,
     Setting,
@@ -25,8 +25,32 @@ from fogline.quantities.base import (
     path_ratio,
     row_redshifts,
 )
+from fogline.quantities.spec import PER, FileSpec, MetaKey, ValueColumn, column_key
 
 Array = NDArray[np.float64]
+
+SPEC: Final = FileSpec(
+    quantity="lls_incidence",
+    description="Number of absorbers above a column (or optical depth at 912 Å) per unit path.",
+    meta=(
+        PER,
+        MetaKey(
+            "tau_min",
+            "number",
+            "lowest optical depth at 912 Å counted",
+            minimum=0.0,
+            exclusive=True,
+            required=False,
+            example=2.0,
+        ),
+        column_key("min", "lowest column counted", False, 17.5),
+        column_key("max", "highest column counted", False, 20.3),
+    ),
+    values={"": ValueColumn(example=1.6, example_err=0.2, help="absorbers per unit path")},
+    counts=True,
+    cosmology_when={"per": ("dX",)},
+    exactly_one_of=(("tau_min", "log_nhi_min"),),
+)
 
 
 def column_limits(data: DataSet, setting: Setting) -> tuple[float, float]:
@@ -41,7 +65,7 @@ def column_limits(data: DataSet, setting: Setting) -> tuple[float, float]:
 class LlsIncidence:
     """Incidence, or number found on a searched path, of Lyman-limit systems."""
 
-    spec = file_specs.LLS_INCIDENCE
+    spec = SPEC
     label = r"LLS incidence $\ell$"
 
     def respond(self, data: DataSet, setting: Setting) -> Block:

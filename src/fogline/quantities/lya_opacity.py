@@ -13,6 +13,7 @@ In a redshift bin the mean is taken of what the file states (τ, flux or decreme
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import Final
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,16 +22,42 @@ from fogline.atomic import LYMAN_ALPHA
 from fogline.datasets import DataSet
 from fogline.doppler import mean_equivalent_width
 from fogline.quadrature import column_nodes
-from fogline.quantities import file_specs
 from fogline.quantities.base import Block, Setting, Term, assemble, bin_mean, row_redshifts
+from fogline.quantities.spec import FileSpec, MetaKey, ValueColumn, column_key
 
 Array = NDArray[np.float64]
+
+SPEC: Final = FileSpec(
+    quantity="lya_opacity",
+    description="Effective optical depth of the Lyα forest, mean flux, or flux decrement.",
+    meta=(
+        MetaKey(
+            "form",
+            "choice",
+            "what the numbers are: tau (-ln mean flux), mean_flux, decrement (1 - mean flux)",
+            choices=("tau", "mean_flux", "decrement"),
+            example="tau",
+        ),
+        column_key("min", "lowest column counted", True, 12.0),
+        column_key("max", "highest column counted (optically thick ones removed?)", True, 17.2),
+    ),
+    values={
+        "tau": ValueColumn(example=0.25, example_err=0.02, help="effective optical depth"),
+        "mean_flux": ValueColumn(
+            maximum=1.0, example=0.78, example_err=0.02, help="mean transmitted flux"
+        ),
+        "decrement": ValueColumn(
+            maximum=1.0, example=0.22, example_err=0.02, help="1 - mean transmitted flux"
+        ),
+    },
+    form_key="form",
+)
 
 
 class LyaOpacity:
     """Effective optical depth of the Lyα forest."""
 
-    spec = file_specs.LYA_OPACITY
+    spec = SPEC
     label = r"Ly$\alpha$ effective optical depth"
 
     def respond(self, data: DataSet, setting: Setting) -> Block:

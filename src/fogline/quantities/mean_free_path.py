@@ -14,6 +14,7 @@ The two differ by a factor of about two at z = 2.4. H and lengths are those of t
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import Final
 
 import numpy as np
 from astropy import units
@@ -24,8 +25,8 @@ from fogline.atomic import photoionization_cross_section
 from fogline.cosmology import C_KM_S, Cosmology
 from fogline.datasets import DataSet
 from fogline.quadrature import column_nodes
-from fogline.quantities import file_specs
 from fogline.quantities.base import Block, Setting, Term, assemble, bin_mean, row_redshifts
+from fogline.quantities.spec import FileSpec, MetaKey, ValueColumn
 from fogline.unit_depth import (
     COEFFICIENTS,
     depth_coefficients,
@@ -36,6 +37,38 @@ from fogline.unit_depth import (
 )
 
 Array = NDArray[np.float64]
+
+SPEC: Final = FileSpec(
+    quantity="mean_free_path",
+    description="Mean free path of photons at the Lyman limit.",
+    meta=(
+        MetaKey(
+            "definition",
+            "choice",
+            "local (inverse of the opacity at 912 Å at that redshift) or unit_depth (distance "
+            "from a source at z at which the optical depth reaches 1)",
+            choices=("local", "unit_depth"),
+            example="local",
+        ),
+        MetaKey(
+            "frame",
+            "choice",
+            "frame of the length",
+            choices=("proper", "comoving"),
+            example="proper",
+        ),
+    ),
+    values={
+        "": ValueColumn(
+            units=("Mpc", "Mpc / littleh"),
+            example=120.0,
+            example_err=15.0,
+            example_unit="Mpc",
+            help="length",
+        )
+    },
+    cosmology_when={},
+)
 
 
 def length_unit(unit: str, cosmology: Cosmology) -> float:
@@ -49,7 +82,7 @@ def length_unit(unit: str, cosmology: Cosmology) -> float:
 class MeanFreePath:
     """Mean free path of photons at the Lyman limit."""
 
-    spec = file_specs.MEAN_FREE_PATH
+    spec = SPEC
     label = r"Mean free path $\lambda_\mathrm{mfp}^{912}$ [Mpc]"
 
     def respond(self, data: DataSet, setting: Setting) -> Block:

@@ -179,3 +179,39 @@ class FileSpec:
     column_bins: bool = False
     cosmology_when: dict[str, tuple[str, ...]] | None = None
     exactly_one_of: tuple[tuple[str, ...], ...] = ()
+
+
+LOG_NHI_RANGE: Final = (8.0, 26.0)
+"""Columns that a file may speak of [dex of cm^-2]: generous, to catch N for log N."""
+
+PER: Final = MetaKey(
+    "per",
+    "choice",
+    "path that the numbers are per: dz (redshift) or dX (absorption distance; needs cosmology)",
+    choices=("dz", "dX"),
+    example="dz",
+)
+"""The meta key of quantities that are per unit path."""
+
+
+def column_key(end: str, help: str, required: bool, example: float) -> MetaKey:
+    """Return the meta key of one end of the counted columns.
+
+    Parameters
+    ----------
+    end : {"min", "max"}
+    help : str
+        Which columns these are.
+    required : bool
+    example : float [dex of cm^-2]
+    """
+    low, high = LOG_NHI_RANGE
+    return MetaKey(
+        f"log_nhi_{end}",
+        "number",
+        f"{help}, log10(N / cm^-2)",
+        minimum=low,
+        maximum=high,
+        required=required,
+        example=example,
+    )
