@@ -27,13 +27,19 @@ include: "workflow/rules/report.smk"
 
 
 rule all:
-    input:
-        expand("results/{analysis}/tables/{table}.html", analysis=ANALYSES, table=TABLES),
-        expand("results/{analysis}/figures/{figure}.pdf", analysis=ANALYSES, figure=FIGURES),
-        COMPARISON,
     default_target: True
+    input:
+        expand(
+            "results/{analysis}/tables/{table}.html", analysis=ANALYSES, table=TABLES
+        ),
+        expand(
+            "results/{analysis}/figures/{figure}.pdf",
+            analysis=ANALYSES,
+            figure=FIGURES,
+        ),
+        COMPARISON,
     localrule: True
 
 
 onsuccess:
-    print("\n" + closing_words(ANALYSES))
+    print(closing_words(ANALYSES))

@@ -1,6 +1,6 @@
 """Speed of the posterior and its sampling: `python -m benchmarks.posterior [--json]`.
 
-Every figure is measured in this run, against its baseline where it has one, on the shipped demo:
+Measured on the shipped demo, each figure against its baseline, where it has one, in the same run:
 
 ``evaluation_speedup``  straightforward evaluation (`benchmarks.straightforward`) over ours, a walker
 ``us_per_walker``       ours, microseconds, 256 walkers at once

@@ -2,8 +2,8 @@
 
 scipy's `PchipInterpolator` for the spline, trapezoids on 1000 columns, a loop over rows. What does
 not depend on the parameters (equivalent widths, cross-sections) is tabulated beforehand, as anybody
-would do. Rows of a redshift bin are taken at its middle. It agrees with the package to a few percent of
-an error bar, which the benchmark checks before it compares speeds.
+would do. Rows of a redshift bin are taken at its middle. The benchmark checks that both evaluations
+agree before it compares their speeds.
 """
 
 from __future__ import annotations

@@ -5,10 +5,10 @@ A photon seen at 912 Å at z_912 had, at an absorber at z' > z_912, ν/ν_912 = 
     τ(z_912; z_em) = ∫_{z_912}^{z_em} dz' (dX/dz') ∫ f(N,z') {1 − exp[−N σ(ν)]} dN
 
 With s = ln[(1+z_em)/(1+z_912)], q(s) = τ/s is smooth and finite at s = 0. Its Chebyshev
-coefficients on 0 < s < ln(1+z_em) are linear in f: they are the raw predictions. From a table of q the first
-crossing of s q(s) = 1 is solved for all walkers and sources at once; the *first*, since τ need not
-be monotone in s (the cross-section falls along the path). Where there is none above redshift 0 the
-answer is infinite: beyond reach.
+coefficients on 0 < s < ln(1+z_em) are linear in f: they are the raw predictions. From a table of q
+the first crossing of s q(s) = 1 is solved for all walkers and sources at once; the *first*, since
+τ need not be monotone in s (the cross-section falls along the path). Where there is none above
+redshift 0 the answer is infinite: beyond reach.
 
 f between its redshift nodes is interpolated in ln(1+z) (Chebyshev, `Z_NODES` nodes from 0 to the
 highest source). Accuracy against adaptive quadrature: ``tests/properties/test_accuracy.py``.

@@ -14,11 +14,11 @@ rule compare_analyses:
         ),
     log:
         "logs/compare_analyses.log",
-    params:
-        analyses=ANALYSES,
-        code=code_hash("fogline.comparison", "fogline.figures"),
     resources:
         mem_mb=1000,
         runtime=10,
+    params:
+        analyses=ANALYSES,
+        code=code_hash("fogline.comparison", "fogline.figures"),
     script:
         "../scripts/compare_analyses.py"

@@ -6,12 +6,12 @@ rule derive_tables:
         expand("results/{{analysis}}/tables/{table}.ecsv", table=DERIVED),
     log:
         "logs/derive_tables/{analysis}.log",
-    params:
-        derive=lambda wildcards: settings_hash(analysis_of(wildcards).derive),
-        code=code_hash("fogline.deriving"),
     resources:
         mem_mb=2000,
         runtime=20,
+    params:
+        derive=lambda wildcards: settings_hash(analysis_of(wildcards).derive),
+        code=code_hash("fogline.deriving"),
     script:
         "../scripts/derive_tables.py"
 
@@ -24,11 +24,11 @@ rule check_predictive:
         table="results/{analysis}/tables/predictive.ecsv",
     log:
         "logs/check_predictive/{analysis}.log",
-    params:
-        draws=lambda wildcards: analysis_of(wildcards).derive.draws,
-        code=code_hash("fogline.deriving"),
     resources:
         mem_mb=1000,
         runtime=10,
+    params:
+        draws=lambda wildcards: analysis_of(wildcards).derive.draws,
+        code=code_hash("fogline.deriving"),
     script:
         "../scripts/check_predictive.py"

@@ -19,13 +19,15 @@ rule draw_figures:
         ],
     log:
         "logs/draw_figures/{analysis}.log",
-    params:
-        derive=lambda wildcards: settings_hash(analysis_of(wildcards).derive),
-        draws=lambda wildcards: analysis_of(wildcards).derive.draws,
-        reference_redshift=lambda wildcards: analysis_of(wildcards).model.reference_redshift,
-        code=code_hash("fogline.figures"),
     resources:
         mem_mb=1500,
         runtime=20,
+    params:
+        derive=lambda wildcards: settings_hash(analysis_of(wildcards).derive),
+        draws=lambda wildcards: analysis_of(wildcards).derive.draws,
+        reference_redshift=lambda wildcards: analysis_of(
+            wildcards
+        ).model.reference_redshift,
+        code=code_hash("fogline.figures"),
     script:
         "../scripts/draw_figures.py"

@@ -5,15 +5,15 @@ rule sample_ensemble:
         ensemble="results/{analysis}/ensembles/{ensemble}.h5",
     log:
         "logs/sample_ensemble/{analysis}_{ensemble}.log",
+    threads: 1
+    resources:
+        mem_mb=1000,
+        runtime=60,
     params:
         sampler=lambda wildcards: settings_hash(analysis_of(wildcards).sampler),
         code=code_hash("fogline.sampling"),
         # Not an output: it must survive a job that is killed.
         checkpoints="results/{analysis}/checkpoints",
-    threads: 1
-    resources:
-        mem_mb=1000,
-        runtime=60,
     script:
         "../scripts/sample_ensemble.py"
 
@@ -28,11 +28,11 @@ rule combine_ensembles:
         parameters="results/{analysis}/tables/parameters.ecsv",
     log:
         "logs/combine_ensembles/{analysis}.log",
-    params:
-        sampler=lambda wildcards: settings_hash(analysis_of(wildcards).sampler),
-        code=code_hash("fogline.combining"),
     resources:
         mem_mb=2000,
         runtime=20,
+    params:
+        sampler=lambda wildcards: settings_hash(analysis_of(wildcards).sampler),
+        code=code_hash("fogline.combining"),
     script:
         "../scripts/combine_ensembles.py"

@@ -5,13 +5,13 @@ rule build_response:
         response="results/{analysis}/response.h5",
     log:
         "logs/build_response/{analysis}.log",
+    resources:
+        mem_mb=600,
+        runtime=10,
     params:
         model=lambda wildcards: settings_hash(
             analysis_of(wildcards).model, analysis_of(wildcards).cosmology
         ),
         code=code_hash("fogline.response_file", "fogline.constraint_files"),
-    resources:
-        mem_mb=600,
-        runtime=10,
     script:
         "../scripts/build_response.py"

@@ -14,10 +14,10 @@ rule render_tables:
         ],
     log:
         "logs/render_tables/{analysis}.log",
-    params:
-        code=code_hash("fogline.html"),
     resources:
         mem_mb=600,
         runtime=10,
+    params:
+        code=code_hash("fogline.html"),
     script:
         "../scripts/render_tables.py"

@@ -20,9 +20,9 @@ class HiDensityTable:
     name = "hi_density"
     definition = (
         "rho_hi = (m_H H0 / c) times the integral of N f dN over all pivots, comoving; omega_hi = "
-        "rho_hi over the critical density today; no helium. Shares of the H I mass: dla from log N "
-        "20.3, sub_dla 19.0 to 20.3, lls 17.2 to 19.0, forest below 17.2. Mass above the last pivot "
-        "is not counted, and above the highest measured column the band is prior-driven."
+        "rho_hi over the critical density today; no helium. Shares of the H I mass: dla from log "
+        "N 20.3, sub_dla 19.0 to 20.3, lls 17.2 to 19.0, forest below 17.2. Mass above the last "
+        "pivot is not counted, and above the highest measured column the band is prior-driven."
     )
 
     def keys(self, draws: Draws) -> Mapping[str, tuple[Array, str, str]]:
