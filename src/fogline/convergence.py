@@ -151,21 +151,23 @@ def assess(
 
 
 def aligned(results: Sequence[EnsembleResult]) -> Array:
-    """Return the ensembles' chains with one spacing and one length, the latest draws of each.
+    """Return the ensembles' chains with one number of draws, spread evenly over each.
+
+    Ensembles stop by themselves, so that a slow one is longer. Cutting it would throw away what it
+    ran for; its draws lie further apart instead, as its autocorrelation time asks for anyway.
 
     Parameters
     ----------
     results : sequence of EnsembleResult
-        Their `thin` differ by powers of two.
+        At least one.
 
     Returns
     -------
     ndarray, shape (n_ensembles, n_stored, n_walkers, n_dim)
     """
-    thin = max(r.thin for r in results)
-    chains = [r.chain[:: -(thin // r.thin)][::-1] for r in results]
-    shortest = min(len(chain) for chain in chains)
-    return np.stack([chain[len(chain) - shortest :] for chain in chains])
+    shortest = min(len(r.chain) for r in results)
+    kept = [np.linspace(0, len(r.chain) - 1, shortest).round().astype(int) for r in results]
+    return np.stack([r.chain[k] for r, k in zip(results, kept, strict=True)])
 
 
 def _diagnose(name: str, x: Array) -> ParameterConvergence:

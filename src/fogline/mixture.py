@@ -24,10 +24,10 @@ Array = NDArray[np.float64]
 LLOYD_STEPS: Final = 4
 """Nearest-centre refinements of the start; EM does the rest."""
 
-POOLED_WEIGHT: Final = 100.0
-"""Samples' worth of the components' average covariance in each one's own. Sixteen components of
-13 dimensions have 1 700 numbers: without it they fit the noise of the warm-up's samples, and
-weights p / q as large as e^9 instead of e^6 appear at one sample in a thousand."""
+POOLED_WEIGHT: Final = 1.0
+"""Samples' worth, for each number in a covariance, of the components' average covariance in each
+one's own. Sixteen components of 13 dimensions have 1 700 numbers: without it they fit the noise of
+the warm-up's samples, and one posterior sample in a thousand has p / q of e^9 instead of e^6."""
 
 FLOOR_VARIANCE: Final = 1e-3
 """Variance, in units of the samples' own and one sample's worth, that keeps factors regular."""
@@ -177,8 +177,8 @@ def fit_student_mixture(
     dof : float, optional
         Degrees of freedom.
     pooled_weight : float, optional
-        Samples' worth of the average covariance in each component's own; 0 where the samples
-        still hold walkers on their way, whose covariance is no example.
+        Samples' worth, for each number in a covariance, of the average covariance in each
+        component's own; 0 where walkers are still on their way, whose spread is no example.
     max_iterations : int, optional
         Iterations at most, on a subset; `FULL_ITERATIONS` on all samples follow.
     tolerance : float, optional
@@ -200,6 +200,7 @@ def fit_student_mixture(
     x = solve_triangular(scale, (samples - centre).T, lower=True).T
     # Shuffled: neighbours in a chain are alike, and a subset must not be one stretch of it.
     x = x[rng.permutation(n)]
+    pooled_weight *= 0.5 * d * (d + 1)
     few = x[: max(n // SUBSET, 2 * (d + 1))]
     assignment = _starting_assignment(few, n_components, rng)
     mixture = _maximise(few, _products(few), assignment, assignment, dof, pooled_weight)

@@ -7,7 +7,7 @@ from typing import TextIO
 
 from fogline.ensemble import run_ensemble
 from fogline.progress import progress_for
-from fogline.provenance import settings_hash
+from fogline.provenance import code_hash, settings_hash
 from fogline.response_file import Fit
 
 
@@ -29,7 +29,8 @@ def sample_ensemble(
     log : text stream
     """
     posterior = fit.posterior
-    fingerprint = settings_hash(fit.fingerprint, fit.analysis.sampler)
+    code = code_hash("fogline.ensemble")
+    fingerprint = settings_hash(fit.fingerprint, fit.analysis.sampler, code)
     checkpoint = Path(checkpoints) / f"{index}-{fingerprint}.h5"
     checkpoint.parent.mkdir(parents=True, exist_ok=True)
     progress = progress_for(f"{fit.analysis.name}, ensemble {index}", log=log)

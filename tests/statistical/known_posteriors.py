@@ -61,14 +61,14 @@ class Linear:
 
 @dataclass(frozen=True)
 class Shell:
-    """A sum of exponentials known to 3%: a thin curved shell, like a tight effective optical depth.
+    """A sum of exponentials known to 5%: a thin curved shell, like a tight effective optical depth.
 
     Quadrature runs over the sum's logarithm u, where the likelihood is normal, and all coordinates
     but the last, which follows: dx_last / du = exp(u - x_last).
     """
 
     value: float = 1.5
-    sigma: float = 0.03
+    sigma: float = 0.05
     n_dim: int = 3
 
     def ln_prob(self, x):

@@ -103,13 +103,18 @@ def test_no_file_is_no_message(tmp_path):
     assert load_checkpoint(tmp_path / "none.h5", "f") == (None, "")
 
 
+def write_half(path):
+    with replacing(path) as file:
+        file["x"] = 1.0
+        raise RuntimeError("on the way")
+
+
 def test_failed_write_leaves_the_former_file_and_no_other(tmp_path):
     path = tmp_path / "c.h5"
     save_checkpoint(path, state_with(), "f")
     before = path.read_bytes()
-    with pytest.raises(RuntimeError, match="on the way"), replacing(path) as file:
-        file["x"] = 1.0
-        raise RuntimeError("on the way")
+    with pytest.raises(RuntimeError, match="on the way"):
+        write_half(path)
     assert path.read_bytes() == before
     assert [p.name for p in tmp_path.iterdir()] == ["c.h5"]
 

@@ -93,7 +93,7 @@ def test_healthy_ensembles_converge():
 
 
 def test_ensemble_elsewhere_fails_by_rhat_and_means():
-    other = ensemble(1).chain + [0.0, 0.5, 0.0]
+    other = ensemble(1).chain + np.array([0.0, 0.5, 0.0])
     rhat, means = reasons_of(
         ensemble(0),
         ensemble(1, other, importance=bare(other)),
@@ -105,7 +105,7 @@ def test_ensemble_elsewhere_fails_by_rhat_and_means():
 
 def test_small_shift_fails_by_means_alone():
     # R-hat of a shift of 0.15 σ between two chains is about 1.003: it passes, the means do not.
-    other = ensemble(1).chain + [0.15, 0.0, 0.0]
+    other = ensemble(1).chain + np.array([0.15, 0.0, 0.0])
     (reason,) = reasons_of(
         ensemble(0), ensemble(1, other, importance=weights(mean=other.mean((0, 1))))
     )
@@ -113,7 +113,7 @@ def test_small_shift_fails_by_means_alone():
 
 
 def test_other_width_fails_by_widths():
-    other = ensemble(1).chain * [1.0, 1.0, 1.2]
+    other = ensemble(1).chain * np.array([1.0, 1.0, 1.2])
     reasons = reasons_of(ensemble(0), ensemble(1, other, importance=weights(sd=other.std((0, 1)))))
     assert any("widths of c differ by" in reason for reason in reasons)
 
@@ -260,13 +260,12 @@ def test_report_is_plain_json_without_nan():
     assert [e["ensemble"] for e in again["autocorrelation"]] == [0, 1]
 
 
-def test_alignment_keeps_the_latest_draws_at_the_coarser_spacing():
-    fine = ensemble(0)
-    coarse = ensemble(1, ensemble(1).chain[1::2][:60], thin=2)
-    both = aligned([fine, coarse])
-    assert both.shape == (2, 60, N_WALKERS, N_DIM)
-    np.testing.assert_array_equal(both[0], fine.chain[1::2][-60:])
-    np.testing.assert_array_equal(both[1], coarse.chain)
+def test_alignment_spreads_the_draws_of_the_longer_ensemble():
+    short, long = ensemble(0, ensemble(0).chain[:67]), ensemble(1)
+    both = aligned([short, long])
+    assert both.shape == (2, 67, N_WALKERS, N_DIM)
+    np.testing.assert_array_equal(both[0], short.chain)
+    np.testing.assert_array_equal(both[1, [0, 33, -1]], long.chain[[0, 100, 199]])
 
 
 def test_longest_rests_by_hand():

@@ -37,8 +37,8 @@ def test_draws_have_the_mixtures_moments(rng):
         for w, c, m in zip(mixture.weights, covariance, mixture.means, strict=True)
     )
     sd = np.sqrt(np.diag(second) - mean**2)
-    # Means: five standard errors. Widths: the error of a variance is var * sqrt((kurtosis - 1) / n),
-    # kurtosis 4.5 of this t at most; half of it for the width.
+    # Means: five standard errors. Widths: a variance has the relative error
+    # sqrt((kurtosis - 1) / n), kurtosis 4.5 for this t; half of it for the width.
     assert_allclose(x.mean(axis=0), mean, atol=5.0 * sd.max() / np.sqrt(n))
     assert_allclose(x.std(axis=0), sd, rtol=5.0 * 0.5 * np.sqrt(3.5 / n))
 

@@ -2,10 +2,10 @@
 
 import json
 
-import arviz_stats
 import numpy as np
 import pytest
 import xarray
+from arviz_stats.base import array_stats
 from astropy.table import Table
 from conftest import DATASETS, StudyFolder
 
@@ -58,8 +58,8 @@ def test_diagnostics_of_others_agree_with_ours(finished: StudyFolder) -> None:
     with xarray.open_dataset(path, group="posterior", engine="h5netcdf") as posterior:
         log_f = posterior["log_f"].to_numpy()
     for k in range(log_f.shape[-1]):
-        assert arviz_stats.base.array_stats.rhat(log_f[..., k]) < 1.01
-        assert arviz_stats.base.array_stats.ess(log_f[..., k]) > 800
+        assert array_stats.rhat(log_f[..., k]) < 1.01
+        assert array_stats.ess(log_f[..., k]) > 800
 
 
 def test_tables_carry_units_bands_and_provenance(finished: StudyFolder) -> None:
