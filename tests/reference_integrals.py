@@ -99,6 +99,10 @@ class Truth:
     cosmology: LambdaCDM
     adaptive: bool = True
 
+    def __repr__(self):
+        exponents = [round(float(x), 4) for x in self.exponents]
+        return f"Truth({self.pivots}, {np.round(self.log_f, 4).tolist()}, {exponents})"
+
     @property
     def theta(self):
         """The parameter vector."""

@@ -31,6 +31,9 @@ from fogline.yaml_lines import Place, read_yaml
 
 _NAME: Final = re.compile(r"[A-Za-z0-9_-]+")
 
+RESERVED: Final = "comparison"
+"""Name that no analysis may have: its folder holds the comparison of all."""
+
 LineOf = Callable[[Place], int]
 
 
@@ -149,6 +152,10 @@ def _chain(name: str, blocks: Mapping[str, Any], faults: _Faults) -> tuple[str, 
     if not _NAME.fullmatch(str(name)):
         what = f"analysis is named '{name}', must be letters, digits, '_' and '-'"
         faults.add(("analyses", name), f"{what} (it names outputs)")
+        return ()
+    if name == RESERVED:
+        what = f"analysis is named '{name}', which is the folder of the comparison of analyses"
+        faults.add(("analyses", name), f"{what}; choose another name")
         return ()
     chain = [name]
     while isinstance(blocks[chain[0]], Mapping) and "base" in blocks[chain[0]]:

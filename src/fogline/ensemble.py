@@ -2,9 +2,9 @@
 
 The first warm-up round knows only stretch moves. After each round a Student-t mixture is fitted
 to the round's later half, and the next one mixes independence proposals from it and local moves
-along it with stretch moves. After the last the mixture is frozen and samples count. The run is a row of blocks; at the
-end of each the state in `fogline.checkpoint.RunState` is all that the rest depends on, so a run
-that is killed and resumed gives the same result bit for bit.
+along it with stretch moves. After the last the mixture is frozen and samples count. The run is a
+row of blocks; at the end of each the state in `fogline.checkpoint.RunState` is all that the rest
+depends on, so a run that is killed and resumed gives the same result bit for bit.
 """
 
 from __future__ import annotations
@@ -40,6 +40,9 @@ MOVES: Final = ("independence", "local", "stretch")
 
 LOCAL_SHARE: Final = 0.7
 """Share of local mixture moves in what independence proposals leave."""
+
+WARM_UP_THIN: Final = 2
+"""Steps between stored draws of the warm-up: the mixtures need many samples, few of them alike."""
 
 CHECKPOINT_SECONDS: Final = 1.0
 """Least time between two checkpoints; which blocks leave one does not change the result."""
@@ -168,7 +171,8 @@ class _Run:
 
     def clear(self, state: RunState) -> None:
         """Forget the draws of a round and begin the next."""
-        state.step, state.thin = 0, self.settings.thin
+        counted = state.round == len(self.rounds)
+        state.step, state.thin = 0, self.settings.thin if counted else WARM_UP_THIN
         state.chain, state.chain_ln_prob = no_draws(state.coords)
         state.tallies = {move: Tally(len(state.coords)) for move in MOVES}
 

@@ -1,8 +1,8 @@
 """Every prediction against adaptive quadrature over random splines, far steeper than any posterior.
 
 `reference_integrals` writes every definition out a second time and shares no code with fogline. The
-tolerance is 5e-5 relative: a tenth of the best published error (2%) of any of the quantities would
-do, and 1e-4 is what fogline promises; typical splines agree to 1e-6 or better.
+tolerance is 5e-5 relative, half of what fogline promises, although slopes here jump from 0.1 to 5
+between neighbouring intervals; plausible splines agree to 1e-6.
 """
 
 import dataclasses
@@ -430,6 +430,25 @@ def test_hi_density(other, truth):
             assert_allclose(predict(truth, data), expected, rtol=RTOL, err_msg=str(meta))
 
 
+def test_plausible_splines_agree_to_2e_6():
+    truth, z = fogged(), [2.4, 3.0, 4.0]
+    unit_depth = {"unit": "Mpc", "definition": "unit_depth", "frame": "proper"}
+    data = [
+        hypothetical("lya_opacity", z, form="tau", log_nhi_min=12.0, log_nhi_max=17.2),
+        hypothetical("lls_incidence", z, per="dz", tau_min=2.0),
+        hypothetical("mean_free_path", z, **unit_depth),
+        hypothetical("hi_density", z, form="omega_hi", log_nhi_min=20.3),
+    ]
+    predicted = build_response(data, setting_of(truth)).predict(truth.theta)
+    expected = [
+        [reference.tau_lya(truth, x, 12.0, 17.2, DOPPLER) for x in z],
+        [truth.integral(LOG_NHI_TAU_2, 22.5, x) * dx_dz(truth.cosmology, x) for x in z],
+        [reference.unit_depth_free_path(truth, x, truth.cosmology) for x in z],
+        [reference.omega_hi(truth, x, 20.3, 22.5, truth.cosmology) for x in z],
+    ]
+    assert_allclose(predicted, np.ravel(expected), rtol=2e-6)
+
+
 # Controls: definitions that must not be mistaken for one another.
 
 
@@ -455,10 +474,11 @@ def test_definitions_differ_by_far_more_than_the_tolerance():
     ratio = paths["unit_depth"] / paths["local"]
     assert ratio[0] > 1.3  # redshifting and dilution of absorbers lengthen the path at low z
     assert 1.0 < ratio[1] < 1.15  # and hardly matter over 10 Mpc
-    steep = [(21.6, 22.1)]
+    steep = [(21.6, 22.4)]
     data = rows("column_distribution", [(2.5, 2.5)], columns=steep, per="dX")
     centre = np.log10(truth.f(np.mean(steep), 2.5))
-    assert abs(predict(truth, data)[0] - centre) > 0.05  # 12%: the bin's mean is not its centre
+    # The bin's mean is not its centre.
+    assert abs(predict(truth, data)[0] - centre) > 0.1
 
 
 def test_counts_on_the_sky_do_not_know_the_cosmology_of_the_results():

@@ -262,6 +262,7 @@ BAD = {
     "empty analyses": (r"(?s)analyses:.*", "analyses: {}", "analyses", "mapping from names"),
     "analysis no mapping": (r"(?s)  again:.*", "  again: all", "again", "is 'all'", "a mapping"),
     "name is a path": ("again:", "a/b:", "a/b:", "'a/b'", "letters, digits"),
+    "name is reserved": ("again:", "comparison:", "comparison:", "another name"),
     "name is a number": ("again:", "2020:", "2020:", "2020 is not text", "quotes"),
     "no datasets": (r"    datasets: \[data/b.*\n", "    exclude: []\n", "joint:", "'datasets'"),
     "datasets a string": (r"\[data/c.ecsv\]", "data/c.ecsv", "data/c.ecsv", "a list of file"),
