@@ -2,7 +2,7 @@
 
 f has kinks at its pivots and evolution pivots, and integrands end at column limits. Between those
 Gauss-Legendre converges geometrically, so panels end there. Numbers of nodes were chosen so that
-every quantity is right to 2e-6 for plausible splines, and to 5e-5 where the slope jumps from 0.1
+every quantity is right to 1e-6 for plausible splines, and to 3e-5 where the slope jumps from 0.1
 to 5 at a pivot; the proof, against adaptive quadrature over random splines, is
 ``tests/properties/test_accuracy.py``.
 """
@@ -22,8 +22,8 @@ from fogline.distribution import LN10
 
 Array = NDArray[np.float64]
 
-NODES_PER_PANEL = 4
-NODES_PER_DEX = 4.0
+NODES_PER_PANEL = 5
+NODES_PER_DEX = 3.0
 REDSHIFT_NODES = 2
 REDSHIFT_NODES_PER_LN = 5.0
 

@@ -2,8 +2,8 @@
 
 For n parameter vectors at once::
 
-    ln f = expand(θ) @ basis        (one product, then one exponential)
-    raw  = f[:, block] @ weights    (one product a data set)
+    ln f = expand(θ) @ basis        (a product, then an exponential)
+    raw  = f @ weights              (both for each data set)
 
 and each quantity brings its raw predictions to the rows of its file. Every data set has nodes of
 its own: exact redshifts, panels that end at its own column limits. Compared with one shared grid in
@@ -25,7 +25,8 @@ from fogline.quantities import QUANTITIES, Block, Setting
 
 Array = NDArray[np.float64]
 
-MAX_CHUNK_BYTES = 1 << 26
+CHUNK = 256
+"""Parameter vectors evaluated at once: bounds the memory when thousands of draws come."""
 
 
 @dataclass(frozen=True)
@@ -47,23 +48,17 @@ class Response:
     blocks: tuple[Block, ...]
 
     @cached_property
-    def basis(self) -> Array:
-        """Matrix from expanded parameters to ln f, shape (n_expanded, n_points)."""
-        return np.ascontiguousarray(
-            self.distribution.basis(
-                np.concatenate([block.log_nhi for block in self.blocks]),
-                np.concatenate([block.z for block in self.blocks]),
-            )
+    def bases(self) -> tuple[Array, ...]:
+        """Matrix from expanded parameters to ln f of each block, shape (n_expanded, n_points)."""
+        return tuple(
+            np.ascontiguousarray(self.distribution.basis(block.log_nhi, block.z))
+            for block in self.blocks
         )
 
     @cached_property
     def slices(self) -> tuple[slice, ...]:
         """Rows of each data set in the predictions."""
         return _slices([data.n_rows for data in self.datasets])
-
-    @cached_property
-    def _points(self) -> tuple[slice, ...]:
-        return _slices([len(block.log_nhi) for block in self.blocks])
 
     def predict(self, theta: ArrayLike) -> Array:
         """Return the prediction of every row in its data set's own convention.
@@ -79,18 +74,18 @@ class Response:
         """
         theta = np.asarray(theta, dtype=float)
         flat = np.atleast_2d(theta)
-        # Chunks keep f in cache and bound the memory when thousands of draws come at once.
-        size = max(1, MAX_CHUNK_BYTES // (8 * self.basis.shape[1]))
-        chunks = [self._predict(flat[i : i + size]) for i in range(0, len(flat), size)]
+        chunks = [self._predict(flat[i : i + CHUNK]) for i in range(0, len(flat), CHUNK)]
         return np.concatenate(chunks).reshape(*theta.shape[:-1], -1)
 
     def _predict(self, theta: Array) -> Array:
-        f = self.distribution.expand(theta) @ self.basis
-        np.exp(f, out=f)
-        parts = [
-            QUANTITIES[data.quantity].reduce(data, f[:, points] @ block.weights, block.constants)
-            for data, block, points in zip(self.datasets, self.blocks, self._points, strict=True)
-        ]
+        expanded = self.distribution.expand(theta)
+        parts = []
+        # Block by block, so that f stays in cache between its exponential and its weights.
+        for data, block, basis in zip(self.datasets, self.blocks, self.bases, strict=True):
+            f = expanded @ basis
+            np.exp(f, out=f)
+            raw = f @ block.weights
+            parts.append(QUANTITIES[data.quantity].reduce(data, raw, block.constants))
         return np.concatenate(parts, axis=-1)
 
 

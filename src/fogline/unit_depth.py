@@ -33,9 +33,9 @@ PATH_NODES = 14
 NEWTON_STEPS = 4
 
 # q is tabulated evenly in v = √(s / s_max), dense near s = 0 where free paths of high-redshift
-# sources end; the cubic through four neighbours is then good to 1e-6 for any draw from
-# a broad prior, and to 1e-7 for most.
-_TABLE_SIZE = 64
+# sources end; the cubic through four neighbours is then good to 6e-6 for any draw from
+# a broad prior, and to 3e-7 for most.
+_TABLE_SIZE = 48
 _TABLE_STEP = np.arange(_TABLE_SIZE + 1) / _TABLE_SIZE
 _TABLE_BASIS = chebyshev.chebvander(2.0 * _TABLE_STEP**2 - 1.0, COEFFICIENTS - 1).T
 
