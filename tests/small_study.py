@@ -44,9 +44,7 @@ MODEL = ModelSettings(
     doppler={"dist": "fixed", "b": 26.0},
 )
 COSMOLOGY = CosmologySettings(70.0, 0.3)
-SETTING = Setting(
-    ColumnDistribution.from_settings(MODEL), Cosmology(70.0, 0.3), MODEL.doppler
-)
+SETTING = Setting(ColumnDistribution.from_settings(MODEL), Cosmology(70.0, 0.3), MODEL.doppler)
 PRIOR = Prior(MODEL)
 SAMPLER = SamplerSettings(
     walkers=128,
@@ -89,12 +87,8 @@ def empty_datasets():
     data = [
         hypothetical("lya_opacity", [2.2, 3.0], form="tau", log_nhi_min=12.0, log_nhi_max=17.2),
         hypothetical("lls_incidence", [2.4, 3.5], per="dz", tau_min=2.0),
-        hypothetical(
-            "mean_free_path", [2.44, 4.0], unit="Mpc", definition="local", frame="proper"
-        ),
-        hypothetical(
-            "mean_free_path", [4.0], unit="Mpc", definition="unit_depth", frame="proper"
-        ),
+        hypothetical("mean_free_path", [2.44, 4.0], unit="Mpc", definition="local", frame="proper"),
+        hypothetical("mean_free_path", [4.0], unit="Mpc", definition="unit_depth", frame="proper"),
         in_bins(bins, EDGES, counts=True, search_path=np.full(4, 4000.0)),
         hypothetical("hi_density", [2.5], form="omega_hi", log_nhi_min=20.3),
     ]

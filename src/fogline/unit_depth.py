@@ -30,7 +30,7 @@ Array = NDArray[np.float64]
 Z_NODES = 14
 COEFFICIENTS = 12
 PATH_NODES = 14
-NEWTON_STEPS = 4
+NEWTON_STEPS = 3
 
 # q is tabulated evenly in v = √(s / s_max), dense near s = 0 where free paths of high-redshift
 # sources end; the cubic through four neighbours is then good to 6e-6 for any draw from
@@ -147,8 +147,11 @@ def solve_unit_depth(coefficients: Array, z_em: ArrayLike) -> Array:
         ln[(1+z_em)/(1+z_912)].
     """
     s_max = np.log1p(np.asarray(z_em, dtype=float))
-    q = coefficients @ _TABLE_BASIS
-    reached = q * _TABLE_STEP**2 >= 1.0 / s_max[..., None]
+    flat = coefficients.reshape(-1, COEFFICIENTS) @ _TABLE_BASIS
+    q = flat.reshape(*coefficients.shape[:-1], _TABLE_SIZE + 1)
+    with np.errstate(divide="ignore"):
+        enough = 1.0 / (s_max[..., None] * _TABLE_STEP**2)
+    reached = q >= enough
     first = np.argmax(reached, axis=-1)
     start = np.clip(first - 2, 0, _TABLE_SIZE - 3)
     cubic = _cubic(q, start)

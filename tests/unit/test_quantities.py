@@ -103,9 +103,7 @@ def test_lya_opacity_of_thin_absorbers_is_the_first_moment():
 def test_forms_of_lya_opacity():
     tau, flux, decrement = (
         predict(
-            hypothetical(
-                "lya_opacity", [2.4, 3.6], form=form, log_nhi_min=12.0, log_nhi_max=17.2
-            )
+            hypothetical("lya_opacity", [2.4, 3.6], form=form, log_nhi_min=12.0, log_nhi_max=17.2)
         )
         for form in ("tau", "mean_flux", "decrement")
     )

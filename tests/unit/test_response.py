@@ -31,7 +31,7 @@ def test_many_vectors_are_predicted_as_each_alone():
 def test_chunks_do_not_show(monkeypatch):
     theta = THETA + np.linspace(-0.1, 0.1, 9)[:, None]
     whole = RESPONSE.predict(theta)
-    monkeypatch.setattr(fogline.response, "MAX_CHUNK_BYTES", 8 * 2 * RESPONSE.basis.shape[1])
+    monkeypatch.setattr(fogline.response, "CHUNK", 2)
     assert_allclose(RESPONSE.predict(theta), whole, rtol=1e-12)
 
 

@@ -31,7 +31,9 @@ def coefficients(q):
 
 @pytest.mark.parametrize("s", [1e-4, 0.003, 0.05, 0.3, 0.7, 1.2])
 def test_constant_opacity(s):
-    assert_allclose(solve_unit_depth(coefficients(lambda x: 0.0 * x + 1.0 / s), Z_EM), s, rtol=1e-10)
+    assert_allclose(
+        solve_unit_depth(coefficients(lambda x: 0.0 * x + 1.0 / s), Z_EM), s, rtol=1e-10
+    )
 
 
 @pytest.mark.parametrize("k", [0.9, 5.0, 80.0])
