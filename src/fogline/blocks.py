@@ -1,7 +1,8 @@
-"""The draws that a run gathers block by block: their start, thinning and acceptance."""
+"""The draws that a run gathers block by block: the posterior they ask, thinning, acceptance."""
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Final
 
 import numpy as np
@@ -10,6 +11,7 @@ from numpy.typing import NDArray
 from fogline.checkpoint import RunState
 
 Array = NDArray[np.float64]
+LogProb = Callable[[Array], Array]
 
 BLOCK: Final = 20
 """Stored draws of a block."""
@@ -43,3 +45,16 @@ def thin_if_long(state: RunState) -> None:
             state.chain_ln_prob[1::2].copy(),
         )
         state.thin *= 2
+
+
+def guarded(log_prob: LogProb) -> LogProb:
+    """Return `log_prob` that raises on NaN, with the parameters that gave it."""
+
+    def guarded(x: Array) -> Array:
+        value = np.asarray(log_prob(x), dtype=np.float64)
+        if np.isnan(value).any():
+            bad = x[np.isnan(value)][0]
+            raise ValueError(f"the posterior is NaN at x = {bad.tolist()}")
+        return value
+
+    return guarded

@@ -25,8 +25,11 @@ from fogline.moves import Tally
 
 Array = NDArray[np.float64]
 
-FORMAT: Final = 1
+FORMAT: Final = 2
 """Raised when the content changes; files of another format are not resumed."""
+
+CHECKPOINT_SECONDS: Final = 1.0
+"""Least time between two checkpoints; which blocks leave one does not change the result."""
 
 STALE_SECONDS: Final = 3600.0
 """Age at which a temporary file that a killed writer left behind is removed."""
@@ -39,7 +42,7 @@ class RunState:
     Attributes
     ----------
     round : int
-        Warm-up round, from 0; the number of rounds while samples count.
+        Warm-up round, from 0; the number of all rounds while samples count.
     step : int
         Steps done in this round.
     coords : ndarray, shape (n_walkers, n_dim)
@@ -60,6 +63,8 @@ class RunState:
         Acceptance of each move in this round.
     history : ndarray, shape (n_checks, 5)
         Columns of `fogline.chains.HISTORY`.
+    warm_up : int
+        Steps of the rounds that are done.
     """
 
     round: int
@@ -73,6 +78,7 @@ class RunState:
     chain_ln_prob: Array
     tallies: dict[str, Tally]
     history: Array = field(default_factory=lambda: np.empty((0, 5)))
+    warm_up: int = 0
 
 
 @contextmanager
@@ -137,6 +143,7 @@ def save_checkpoint(path: Path, state: RunState, fingerprint: str) -> None:
             round=state.round,
             step=state.step,
             thin=state.thin,
+            warm_up=state.warm_up,
         )
         for name in ("coords", "ln_prob", "chain", "chain_ln_prob", "history"):
             file[name] = getattr(state, name)
@@ -181,6 +188,7 @@ def _load_state(file: h5py.File) -> RunState:
         round=int(file.attrs["round"]),
         step=int(file.attrs["step"]),
         thin=int(file.attrs["thin"]),
+        warm_up=int(file.attrs["warm_up"]),
         random_state=_load_random_state(file["random_state"]),
         mixture=load_mixture(file["mixture"]),
         tallies={move: _load_tally(data) for move, data in file["tallies"].items()},
@@ -219,3 +227,22 @@ def remove_leftovers(path: Path) -> None:
                 old.unlink()
         except FileNotFoundError:
             continue  # another writer was quicker
+
+
+class Keeper:
+    """Where a run leaves its checkpoints, and how often."""
+
+    def __init__(self, path: Path | None, fingerprint: str) -> None:
+        self.path = path
+        self.fingerprint = fingerprint
+        self._saved = time.monotonic()
+
+    def load(self) -> tuple[RunState | None, str]:
+        """Return the state to resume from, if any, and why a file was left aside."""
+        return load_checkpoint(self.path, self.fingerprint) if self.path else (None, "")
+
+    def save(self, state: RunState) -> None:
+        """Write a checkpoint unless the last one is fresh."""
+        if self.path and time.monotonic() - self._saved > CHECKPOINT_SECONDS:
+            save_checkpoint(self.path, state, self.fingerprint)
+            self._saved = time.monotonic()

@@ -9,7 +9,6 @@ depends on, so a run that is killed and resumed gives the same result bit for bi
 
 from __future__ import annotations
 
-import time
 from collections.abc import Callable
 from pathlib import Path
 from typing import Final
@@ -20,15 +19,15 @@ from emcee.state import State
 from numpy.typing import NDArray
 from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]
 
-from fogline.blocks import BLOCK, acceptance, no_draws, thin_if_long
+from fogline.blocks import BLOCK, acceptance, guarded, no_draws, thin_if_long
 from fogline.chains import EnsembleResult
-from fogline.checkpoint import RunState, load_checkpoint, save_checkpoint
+from fogline.checkpoint import Keeper, RunState
 from fogline.evidence import importance_sample
 from fogline.moves import CountedStretchMove, IndependenceMove, LocalMove, Tally
 from fogline.progress import Progress, Silent
 from fogline.settings import SamplerSettings
 from fogline.stopping import ending, look, status, worth_a_look
-from fogline.warmup import fit_round, prior_draws, rescue
+from fogline.warmup import fit_round, next_round, prior_draws, rescue, schedule
 
 __all__ = ["EnsembleResult", "run_ensemble"]
 
@@ -43,9 +42,6 @@ LOCAL_SHARE: Final = 0.7
 
 WARM_UP_THIN: Final = 2
 """Steps between stored draws of the warm-up: the mixtures need many samples, few of them alike."""
-
-CHECKPOINT_SECONDS: Final = 1.0
-"""Least time between two checkpoints; which blocks leave one does not change the result."""
 
 
 def run_ensemble(
@@ -88,40 +84,8 @@ def run_ensemble(
     """
     # One BLAS thread: products are then rounded alike in every run, and ensembles do not compete.
     with threadpool_limits(1, user_api="blas"):
-        run = _Run(_guarded(log_prob), n_dim, settings, index, progress or Silent())
-        return run.to_end(_Keeper(checkpoint, f"{fingerprint}/{index}"))
-
-
-def _guarded(log_prob: LogProb) -> LogProb:
-    """Return `log_prob` that raises on NaN, with the parameters that gave it."""
-
-    def guarded(x: Array) -> Array:
-        value = np.asarray(log_prob(x), dtype=np.float64)
-        if np.isnan(value).any():
-            bad = x[np.isnan(value)][0]
-            raise ValueError(f"the posterior is NaN at x = {bad.tolist()}")
-        return value
-
-    return guarded
-
-
-class _Keeper:
-    """Where a run leaves its checkpoints, and how often."""
-
-    def __init__(self, path: Path | None, fingerprint: str) -> None:
-        self.path = path
-        self.fingerprint = fingerprint
-        self._saved = time.monotonic()
-
-    def load(self) -> tuple[RunState | None, str]:
-        """Return the state to resume from, if any, and why a file was left aside."""
-        return load_checkpoint(self.path, self.fingerprint) if self.path else (None, "")
-
-    def save(self, state: RunState) -> None:
-        """Write a checkpoint unless the last one is fresh."""
-        if self.path and time.monotonic() - self._saved > CHECKPOINT_SECONDS:
-            save_checkpoint(self.path, state, self.fingerprint)
-            self._saved = time.monotonic()
+        run = _Run(guarded(log_prob), n_dim, settings, index, progress or Silent())
+        return run.to_end(Keeper(checkpoint, f"{fingerprint}/{index}"))
 
 
 class _Run:
@@ -142,13 +106,13 @@ class _Run:
         self.settings = settings
         self.index = index
         self.progress = progress
-        self.rounds = tuple(zip(settings.warm_up, settings.components, strict=True))
+        self.rounds = schedule(settings)
         streams = np.random.SeedSequence(settings.seed).spawn(max(settings.ensembles, index + 1))
         # Streams: the start, emcee's RandomState, the importance draws, one for each fit. None
         # is used twice, so that none has to be in a checkpoint but emcee's.
         self.streams = streams[index].spawn(3 + len(self.rounds))
 
-    def to_end(self, keeper: _Keeper) -> EnsembleResult:
+    def to_end(self, keeper: Keeper) -> EnsembleResult:
         """Run from the start, or from a checkpoint, to the result."""
         state, message = keeper.load()
         if message:
@@ -167,7 +131,9 @@ class _Run:
         """Return the name of the round."""
         if state.round == len(self.rounds):
             return "sampling"
-        return f"warm-up {state.round + 1}/{len(self.rounds)}"
+        n_asked = len(self.settings.warm_up)
+        more = " (more, the mixture is not good enough)" if state.round >= n_asked else ""
+        return f"warm-up {state.round + 1}{more or f'/{n_asked}'}"
 
     def clear(self, state: RunState) -> None:
         """Forget the draws of a round and begin the next."""
@@ -176,7 +142,7 @@ class _Run:
         state.chain, state.chain_ln_prob = no_draws(state.coords)
         state.tallies = {move: Tally(len(state.coords)) for move in MOVES}
 
-    def warm_up(self, state: RunState, keeper: _Keeper) -> None:
+    def warm_up(self, state: RunState, keeper: Keeper) -> None:
         """Run what is left of the warm-up."""
         while state.round < len(self.rounds):
             n_steps = self.rounds[state.round][0]
@@ -187,7 +153,7 @@ class _Run:
                 keeper.save(state)
             self.finish_round(state)
 
-    def count(self, state: RunState, keeper: _Keeper) -> None:
+    def count(self, state: RunState, keeper: Keeper) -> None:
         """Sample until the target or the step limit."""
         self.progress.stage(self.stage(state), self.settings.max_steps)
         self.progress.advance(state.step)
@@ -246,7 +212,8 @@ class _Run:
         rates = ", ".join(f"{m} {100 * a:.0f}%" for m, a in acceptance(state).items())
         rescued = f", {n_moved} stuck walkers moved" if n_moved else ""
         self.progress.note(f"{self.stage(state)} done, accepted: {rates}{rescued}")
-        state.round += 1
+        state.warm_up += state.step
+        state.round = next_round(state, self.settings)
         self.clear(state)
 
     def result(self, state: RunState) -> EnsembleResult:
@@ -262,7 +229,7 @@ class _Run:
             ln_prob=state.chain_ln_prob,
             steps=state.step,
             thin=state.thin,
-            warm_up=sum(self.settings.warm_up),
+            warm_up=state.warm_up,
             acceptance=acceptance(state),
             walker_acceptance=accepted / n_proposed,
             mixture=state.mixture,

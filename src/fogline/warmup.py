@@ -11,9 +11,11 @@ from typing import Final
 import numpy as np
 from numpy.typing import NDArray
 
-from fogline.blocks import no_draws
+from fogline.blocks import acceptance, no_draws
 from fogline.checkpoint import RunState
-from fogline.mixture import POOLED_WEIGHT, StudentMixture, fit_student_mixture
+from fogline.mixture import StudentMixture
+from fogline.mixture_fit import POOLED_WEIGHT, fit_student_mixture
+from fogline.settings import SamplerSettings
 
 Array = NDArray[np.float64]
 LogProb = Callable[[Array], Array]
@@ -24,12 +26,36 @@ START_ROUNDS: Final = 100
 FIT_SAMPLES: Final = 20_000
 """Samples that a mixture is fitted to, at most."""
 
+EXTRA_ROUNDS: Final = (2, 3)
+"""Further rounds, as multiples of the last one's length, where its mixture is not good enough."""
+
+GOOD_ACCEPTANCE: Final = 0.45
+"""Acceptance of independence proposals that makes further rounds needless. Below, walkers get
+stuck where the mixture is too thin, and counted steps are lost by thousands."""
+
 RESCUE_DRAWS: Final = 16
 """Draws of the mixture per walker among which those that are moved find a place."""
 
 STUCK: Final = 6.0
 """Excess of ln(p / q) over its median that marks a walker as stuck. Of a posterior that the
 mixture fits one sample in a thousand has more, so that hardly any is moved in vain."""
+
+
+def schedule(settings: SamplerSettings) -> tuple[tuple[int, int], ...]:
+    """Return steps and components of every warm-up round, those included that may not be needed."""
+    rounds = tuple(zip(settings.warm_up, settings.components, strict=True))
+    steps, n_components = rounds[-1]
+    return rounds + tuple((k * steps, n_components) for k in EXTRA_ROUNDS)
+
+
+def next_round(state: RunState, settings: SamplerSettings) -> int:
+    """Return the round that follows; `EXTRA_ROUNDS` are left out once the mixture is good."""
+    n_asked = len(settings.warm_up)
+    # Without independence proposals there is nothing to wait for.
+    good = acceptance(state).get("independence", 1.0) >= GOOD_ACCEPTANCE
+    if state.round + 1 >= n_asked and good:
+        return n_asked + len(EXTRA_ROUNDS)
+    return state.round + 1
 
 
 def prior_draws(

@@ -11,12 +11,11 @@ from functools import lru_cache
 import mpmath
 import numpy as np
 import pytest
-import reference_integrals as reference
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose
-from reference_integrals import Truth, background, bin_mean, dx_dz
 
+import reference_integrals as reference
 from fogline.atomic import equivalent_width, photoionization_cross_section
 from fogline.cosmology import Cosmology
 from fogline.datasets import hypothetical
@@ -24,6 +23,7 @@ from fogline.distribution import ColumnDistribution
 from fogline.quantities import Setting
 from fogline.response import build_response
 from fogline.unit_depth import continuum_weights, redshift_grid
+from reference_integrals import Truth, background, bin_mean, dx_dz
 
 RTOL = 5e-5
 DOPPLER = 26.0

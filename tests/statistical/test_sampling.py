@@ -173,6 +173,15 @@ def test_too_few_walkers_are_refused():
         run_ensemble(lambda x: x[:, 0], 40, settings(), 0)
 
 
+def test_warm_up_goes_on_only_where_the_mixture_is_poor():
+    easy, _ = run(Linear(), ensembles=1)
+    assert easy[0].warm_up == 500  # as the settings ask
+    # One component on a shell: proposals are mostly refused, and two more rounds are made.
+    hard, _ = run(Shell(), ensembles=1, warm_up=(200, 100), components=(1, 1), max_steps=100)
+    assert hard[0].acceptance["independence"] < 0.45
+    assert hard[0].warm_up == 200 + 100 + 200 + 300
+
+
 def test_long_chain_is_thinned_to_fit_its_file(monkeypatch):
     monkeypatch.setattr("fogline.blocks.MAX_CHAIN_BYTES", 64 * 5 * 8 * 200.0)
     results, _ = run(Linear(), ensembles=1, target_ess=10**9, max_steps=2000)

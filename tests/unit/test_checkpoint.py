@@ -42,13 +42,14 @@ def state_with(value: float = 0.0) -> RunState:
         chain_ln_prob=chain.sum(axis=2),
         tallies={"stretch": tally, "local": Tally(6)},
         history=np.array([[20.0, 3.0, np.nan, np.nan, np.nan]]),
+        warm_up=460,
     )
 
 
 def assert_same_state(a: RunState, b: RunState) -> None:
     for name in ("coords", "ln_prob", "chain", "chain_ln_prob", "history"):
         np.testing.assert_array_equal(getattr(a, name), getattr(b, name))
-    assert (a.round, a.step, a.thin) == (b.round, b.step, b.thin)
+    assert (a.round, a.step, a.thin, a.warm_up) == (b.round, b.step, b.thin, b.warm_up)
     for x, y in zip(a.random_state, b.random_state, strict=True):
         assert np.array_equal(x, y)
     assert a.mixture is not None
@@ -164,10 +165,11 @@ RUNNER = textwrap.dedent("""
     import sys, time
     from pathlib import Path
     import numpy as np
+    import fogline.checkpoint as checkpoints
     import fogline.ensemble as ensemble
     from fogline.settings import SamplerSettings
 
-    ensemble.CHECKPOINT_SECONDS = 0.0  # every block leaves one
+    checkpoints.CHECKPOINT_SECONDS = 0.0  # every block leaves one
     PAUSE = float(sys.argv[3])
 
     def log_prob(x):
@@ -255,7 +257,7 @@ def small_run(checkpoint, fingerprint, seed=5, notes=None):
 
 
 def test_checkpoint_of_other_inputs_does_not_change_the_run(tmp_path, monkeypatch):
-    monkeypatch.setattr("fogline.ensemble.CHECKPOINT_SECONDS", 0.0)
+    monkeypatch.setattr("fogline.checkpoint.CHECKPOINT_SECONDS", 0.0)
     path = tmp_path / "c.h5"
     small_run(path, "other", seed=6)
     notes: list[str] = []
@@ -265,7 +267,7 @@ def test_checkpoint_of_other_inputs_does_not_change_the_run(tmp_path, monkeypatc
 
 
 def test_finished_checkpoint_gives_the_result_again(tmp_path, monkeypatch):
-    monkeypatch.setattr("fogline.ensemble.CHECKPOINT_SECONDS", 0.0)
+    monkeypatch.setattr("fogline.checkpoint.CHECKPOINT_SECONDS", 0.0)
     path = tmp_path / "c.h5"
     first = small_run(path, "f")
     notes: list[str] = []

@@ -3,10 +3,10 @@
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose, assert_array_equal
-from reference_integrals import Truth, background
-from small_study import EVOLUTION_PIVOTS, EXPONENTS, LOG_F, MODEL, PIVOTS, THETA
 
 from fogline.distribution import ColumnDistribution
+from reference_integrals import Truth, background
+from small_study import EVOLUTION_PIVOTS, EXPONENTS, LOG_F, MODEL, PIVOTS, THETA
 
 DISTRIBUTION = ColumnDistribution.from_settings(MODEL)
 

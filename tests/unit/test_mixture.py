@@ -6,7 +6,8 @@ from numpy.testing import assert_allclose
 from scipy.special import logsumexp
 from scipy.stats import multivariate_t
 
-from fogline.mixture import StudentMixture, fit_student_mixture
+from fogline.mixture import StudentMixture
+from fogline.mixture_fit import fit_student_mixture
 
 
 def two_components() -> StudentMixture:

@@ -6,10 +6,10 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 from scipy import stats
-from small_study import PRIOR, SETTING, THETA, empty_datasets
 
 from fogline.posterior import Posterior
 from fogline.response import build_response
+from small_study import PRIOR, SETTING, THETA, empty_datasets
 
 
 def posterior_of(datasets):

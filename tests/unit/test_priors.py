@@ -6,9 +6,9 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 from scipy import stats
-from small_study import MODEL, PIVOTS
 
 from fogline.priors import Prior, cut_quantile, unit_normal_map
+from small_study import MODEL, PIVOTS
 
 N_DRAWS = 20_000
 ANCHOR = PIVOTS.index(20.3)

@@ -6,7 +6,6 @@ import numpy as np
 import pytest
 from astropy import units
 from numpy.testing import assert_allclose, assert_array_equal
-from small_study import COSMOLOGY, MODEL, PIVOTS, in_bins
 
 from fogline.atomic import LYMAN_ALPHA, SIGMA_912, log_nhi_at_tau
 from fogline.cosmology import C_KM_S, Cosmology
@@ -16,6 +15,7 @@ from fogline.quantities import FILE_SPECS, QUANTITIES, Setting
 from fogline.quantities.hi_density import mass_per_moment
 from fogline.quantities.mean_free_path import length_unit
 from fogline.response import build_response
+from small_study import COSMOLOGY, MODEL, PIVOTS, in_bins
 
 BETA, LOG_A = 1.6, 8.0
 # A straight line through the pivots: f = 10^8 N^-1.6 at every redshift.
