@@ -2,7 +2,7 @@
 
 Measured on the shipped demo, each figure against its baseline, where it has one, in the same run:
 
-``evaluation_speedup``  straightforward evaluation (`benchmarks.straightforward`) over ours, a walker
+``evaluation_speedup``  a straightforward evaluation (`benchmarks.straightforward`) over ours
 ``us_per_walker``       ours, microseconds, 256 walkers at once
 ``ess_per_s``           effective samples a second once warmed up, one core, slowest parameter
 ``ess_speedup``         the same over that of emcee's default move on the same posterior, from the

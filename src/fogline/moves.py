@@ -1,6 +1,6 @@
-"""Moves of the ensemble: emcee's stretch move without its loop, and an independence move.
+"""Moves of the ensemble: emcee's stretch move without its loop, and two along a frozen mixture.
 
-Both are ordinary emcee moves: they draw from the ``RandomState`` that emcee hands them alone, so
+All are ordinary emcee moves: they draw from the ``RandomState`` that emcee hands them alone, so
 that its state and the walkers' positions determine the rest of a run.
 """
 

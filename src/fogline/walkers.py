@@ -7,8 +7,8 @@ precision, as does a scale of every raw prediction::
 
     raw = scale · [exp{(expand(θ) − expand(θ_0)) @ basis} @ (f_0 · weights / scale)]
 
-Predictions agree with those of `fogline.response.Response` to 5e-6 over draws from the prior and to
-1e-6 over any posterior worth the name (``tests/unit/test_walkers.py``); everything that users read
+Predictions agree with those of `fogline.response.Response` to 1e-5 over draws from the prior and to
+2e-6 near a posterior (``tests/unit/test_walkers.py``); everything that users read
 (predictions, derived tables, replicates) is computed in double precision.
 """
 
