@@ -16,8 +16,8 @@ from fogline.mixture import StudentMixture
 
 Array = NDArray[np.float64]
 
-HISTORY: Final = ("steps", "autocorrelation", "rhat", "ess_bulk", "ess_tail")
-"""Columns of the history; the last three are NaN where a check did not need them."""
+HISTORY: Final = ("steps", "autocorrelation", "rhat", "ess_bulk", "ess_tail", "stuck")
+"""Columns of the history; the last four are NaN where a check did not need them."""
 
 _ARRAYS: Final = ("chain", "ln_prob", "walker_acceptance", "history")
 _INTEGERS: Final = ("steps", "thin", "warm_up", "seed", "index")
@@ -46,7 +46,7 @@ class EnsembleResult:
         Share of proposals that each walker took.
     mixture : StudentMixture
         Proposal of the independence move, frozen before the first counted step.
-    history : ndarray, shape (n_checks, 5)
+    history : ndarray, shape (n_checks, 6)
         Columns of `HISTORY`.
     stopped : bool
         Whether the ensemble met its own target; else it ran into the step limit.

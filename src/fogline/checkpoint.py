@@ -61,7 +61,7 @@ class RunState:
         Their ln posterior.
     tallies : dict of str to Tally
         Acceptance of each move in this round.
-    history : ndarray, shape (n_checks, 5)
+    history : ndarray, shape (n_checks, 6)
         Columns of `fogline.chains.HISTORY`.
     warm_up : int
         Steps of the rounds that are done.
@@ -77,7 +77,7 @@ class RunState:
     chain: Array
     chain_ln_prob: Array
     tallies: dict[str, Tally]
-    history: Array = field(default_factory=lambda: np.empty((0, 5)))
+    history: Array = field(default_factory=lambda: np.empty((0, 6)))
     warm_up: int = 0
 
 

@@ -137,7 +137,7 @@ def assess(
         *_high_rhat(parameters, settings.max_rhat),
         *_few_samples(parameters, settings.target_ess),
         *checks.step_limit(results),
-        *checks.stuck_walkers(results),
+        *checks.stuck(results),
         *checks.disagreeing_ensembles(results, coordinates),
         *checks.chain_lengths(results, tables),
         *checks.bad_evidence(results),

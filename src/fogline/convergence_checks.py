@@ -17,6 +17,7 @@ from fogline.chains import EnsembleResult
 from fogline.diagnostics import autocorrelation_times
 from fogline.evidence import Evidence, combine_evidence
 from fogline.stopping import MAX_GROWTH, MIN_TIMES
+from fogline.stuck import stuck_walkers
 
 Array = NDArray[np.float64]
 Table = Sequence[tuple[int, float]]
@@ -37,64 +38,20 @@ MAX_PARETO_K: Final = 0.7
 MIN_EFFICIENCY: Final = 1e-3
 """Efficiency below which a handful of draws decide the evidence."""
 
-OUTLYING: Final = 8.0
-"""Deficit of a walker's mean ln posterior, in robust standard deviations of all walkers' means."""
-
-FAR_OUT: Final = 2.0
-"""The same in robust standard deviations of ln posterior itself: where walkers move slowly their
-means have heavy tails, and one that merely lingered is not stuck."""
-
-IMMOBILE: Final = 0.1
-"""Share of the median walker's moves below which a walker is stuck."""
-
-LONGEST_REST: Final = 0.3
-"""Share of the chain that no walker rests at one place."""
-
 
 def step_limit(results: Sequence[EnsembleResult]) -> list[str]:
     """Find ensembles that ended without meeting their own target."""
     return [f"{_name(r)}: {r.reason}" for r in results if not r.stopped]
 
 
-def stuck_walkers(results: Sequence[EnsembleResult]) -> list[str]:
+def stuck(results: Sequence[EnsembleResult]) -> list[str]:
     """Find walkers that hardly move, rest too long, or stay far out in ln posterior."""
-    return [text for r in results for text in _stuck(r)]
-
-
-def _stuck(result: EnsembleResult) -> list[str]:
-    moved = (np.diff(result.chain, axis=0) != 0.0).any(axis=2)
-    share = moved.mean(axis=0)
-    mean_ln_prob = result.ln_prob.mean(axis=0)
-    deficit = np.median(mean_ln_prob) - mean_ln_prob
-    far = np.maximum(OUTLYING * _spread(mean_ln_prob), FAR_OUT * _spread(result.ln_prob))
-    groups = {
-        "hardly move": share <= IMMOBILE * np.median(share),
-        f"rest at one place for {LONGEST_REST:.0%} of the chain": (
-            longest_rests(moved) > LONGEST_REST * len(moved)
-        ),
-        "stay far below the others in ln posterior": deficit > far,
-    }
     return [
-        f"{_name(result)}: {where.sum()} of {len(where)} walkers {text} (first: {where.argmax()})"
-        for text, where in groups.items()
-        if where.any()
+        f"{_name(r)}: {walkers.sum()} of {len(walkers)} walkers {what} (first: {walkers.argmax()})"
+        for r in results
+        for what, walkers in stuck_walkers(r.chain, r.ln_prob).items()
+        if walkers.any()
     ]
-
-
-def _spread(x: Array) -> float:
-    """Return a robust standard deviation."""
-    # 1.4826 median absolute deviations are a standard deviation of a normal distribution.
-    return float(1.4826 * np.median(np.abs(x - np.median(x))))
-
-
-def longest_rests(moved: NDArray[np.bool_]) -> NDArray[np.int64]:
-    """Return each walker's longest run without a move, from (n_stored - 1, n_walkers)."""
-    now = np.zeros(moved.shape[1], dtype=np.int64)
-    longest = now.copy()
-    for row in moved:
-        now = np.where(row, 0, now + 1)
-        longest = np.maximum(longest, now)
-    return longest
 
 
 def chain_lengths(results: Sequence[EnsembleResult], tables: Sequence[Table]) -> list[str]:

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from fogline.checkpoint import RunState
 from fogline.diagnostics import autocorrelation_times, effective_sizes, split_rhat
 from fogline.settings import SamplerSettings
+from fogline.stuck import stuck_walkers
 
 Array = NDArray[np.float64]
 
@@ -60,19 +61,21 @@ def look(state: RunState, settings: SamplerSettings) -> Array:
         or tau > MAX_GROWTH * tau_half
         or promised < own_target(settings)
     ):
-        return np.array([state.step, tau, np.nan, np.nan, np.nan])
+        return np.array([state.step, tau, np.nan, np.nan, np.nan, np.nan])
     parameters = [chain[:, :, k] for k in range(chain.shape[2])]
     rhat = max(split_rhat([x]) for x in parameters)
     sizes = np.array([effective_sizes(x) for x in parameters])
-    return np.array([state.step, tau, rhat, *sizes.min(axis=0)])
+    walkers = np.any(list(stuck_walkers(chain, state.chain_ln_prob).values()), axis=0)
+    return np.array([state.step, tau, rhat, *sizes.min(axis=0), walkers.sum()])
 
 
 def ending(state: RunState, settings: SamplerSettings) -> Ending | None:
     """Return why the ensemble ends here, or None where it goes on."""
     if len(state.history):
-        steps, tau, rhat, bulk, tail = state.history[-1]
-        if rhat < settings.max_rhat and min(bulk, tail) >= own_target(settings):
-            text = f"target met after {steps:.0f} steps: {_words(tau, rhat, bulk, tail)}"
+        steps, tau, rhat, bulk, tail, stuck = state.history[-1]
+        enough = min(bulk, tail) >= own_target(settings)
+        if rhat < settings.max_rhat and enough and stuck == 0:
+            text = f"target met after {steps:.0f} steps: {_words(tau, rhat, bulk, tail, stuck)}"
             return Ending(True, text)
     if state.step >= settings.max_steps:
         return Ending(False, f"step limit of {settings.max_steps} reached: {status(state)}")
@@ -87,6 +90,9 @@ def status(state: RunState) -> str:
     return f"{steps:.0f} steps, {_words(*numbers)}"
 
 
-def _words(tau: float, rhat: float, bulk: float, tail: float) -> str:
+def _words(tau: float, rhat: float, bulk: float, tail: float, stuck: float) -> str:
     text = f"autocorrelation time {tau:.0f}"
-    return text if np.isnan(rhat) else f"{text}, R-hat {rhat:.4f}, ESS {min(bulk, tail):.0f}"
+    if np.isnan(rhat):
+        return text
+    text += f", R-hat {rhat:.4f}, ESS {min(bulk, tail):.0f}"
+    return f"{text}, walkers stuck: {stuck:.0f}" if stuck else text

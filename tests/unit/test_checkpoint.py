@@ -41,7 +41,7 @@ def state_with(value: float = 0.0) -> RunState:
         chain=chain,
         chain_ln_prob=chain.sum(axis=2),
         tallies={"stretch": tally, "local": Tally(6)},
-        history=np.array([[20.0, 3.0, np.nan, np.nan, np.nan]]),
+        history=np.array([[20.0, 3.0, np.nan, np.nan, np.nan, np.nan]]),
         warm_up=460,
     )
 

@@ -12,7 +12,7 @@ from numpy.testing import assert_allclose
 
 from fogline.chains import EnsembleResult
 from fogline.convergence import aligned, assess
-from fogline.convergence_checks import chain_lengths, longest_rests
+from fogline.convergence_checks import chain_lengths
 from fogline.diagnostics import (
     as_chains,
     autocorrelation_times,
@@ -61,7 +61,7 @@ def ensemble(index: int, chain=None, **changes) -> EnsembleResult:
         acceptance={"stretch": 0.3, "independence": 0.5},
         walker_acceptance=np.full(N_WALKERS, 0.4),
         mixture=StudentMixture(np.ones(1), np.zeros((1, N_DIM)), np.eye(N_DIM)[None]),
-        history=np.empty((0, 5)),
+        history=np.empty((0, 6)),
         stopped=True,
         reason="target met",
         seed=1,
@@ -266,11 +266,6 @@ def test_alignment_spreads_the_draws_of_the_longer_ensemble():
     assert both.shape == (2, 67, N_WALKERS, N_DIM)
     np.testing.assert_array_equal(both[0], short.chain)
     np.testing.assert_array_equal(both[1, [0, 33, -1]], long.chain[[0, 100, 199]])
-
-
-def test_longest_rests_by_hand():
-    moved = np.array([[1, 0, 0], [0, 0, 1], [0, 0, 0], [1, 0, 0]], dtype=bool)
-    np.testing.assert_array_equal(longest_rests(moved), [2, 4, 2])
 
 
 def test_chains_are_time_halves_of_walker_groups():
