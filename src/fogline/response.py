@@ -82,11 +82,33 @@ class Response:
         parts = []
         # Block by block, so that f stays in cache between its exponential and its weights.
         for data, block, basis in zip(self.datasets, self.blocks, self.bases, strict=True):
-            f = expanded @ basis
-            np.exp(f, out=f)
-            raw = f @ block.weights
+            raw = _raw(expanded, basis, block.weights)
             parts.append(QUANTITIES[data.quantity].reduce(data, raw, block.constants))
         return np.concatenate(parts, axis=-1)
+
+
+def raw_predictions(distribution: ColumnDistribution, block: Block, theta: Array) -> Array:
+    """Return the raw predictions of one block: integrals of f, before any `reduce`.
+
+    Parameters
+    ----------
+    distribution : ColumnDistribution
+    block : Block
+    theta : ndarray, shape (n, n_parameters)
+
+    Returns
+    -------
+    ndarray, shape (n, n_raw)
+    """
+    basis = distribution.basis(block.log_nhi, block.z)
+    chunks = [theta[i : i + CHUNK] for i in range(0, len(theta), CHUNK)]
+    return np.concatenate([_raw(distribution.expand(t), basis, block.weights) for t in chunks])
+
+
+def _raw(expanded: Array, basis: Array, weights: Array) -> Array:
+    f = expanded @ basis
+    np.exp(f, out=f)
+    return np.asarray(f @ weights)
 
 
 def build_response(datasets: Sequence[DataSet], setting: Setting) -> Response:

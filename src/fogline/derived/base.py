@@ -10,7 +10,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fogline.quadrature import column_nodes
-from fogline.quantities.base import Setting
+from fogline.quantities.base import Block, Setting
+from fogline.response import raw_predictions
 from fogline.settings import DeriveSettings
 from fogline.tables import Curve
 
@@ -61,6 +62,10 @@ class Draws:
     def f(self, log_nhi: Array, z: Array | float) -> Array:
         """Return f(N, X, z) [cm^2] at points, shape (n_draws, n_points)."""
         return 10.0 ** self.setting.distribution.log_f(self.theta, log_nhi, z)
+
+    def integrate(self, block: Block) -> Array:
+        """Return the raw predictions of a block, shape (n_draws, n_raw)."""
+        return raw_predictions(self.setting.distribution, block, self.theta)
 
     def clip(self, lo: float, hi: float) -> tuple[float, float]:
         """Return a column range cut to the pivots; empty where it lies outside."""

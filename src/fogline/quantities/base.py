@@ -10,7 +10,7 @@ mean over a redshift bin of whatever was measured. All physics sits in points an
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field
 from typing import Protocol
 
@@ -134,6 +134,19 @@ def assemble(terms: Iterable[tuple[int, Term]], n_raw: int, **constants: Array) 
         weights=weights,
         constants=constants,
     )
+
+
+def over_doppler(setting: Setting, build: Callable[[Distribution], Block]) -> Block:
+    """Return a block whose kernel has absorption lines in it.
+
+    Parameters
+    ----------
+    setting : Setting
+    build : callable
+        Makes the block for one ``doppler`` block of the config (it must use this argument, not
+        ``setting.doppler``).
+    """
+    return build(setting.doppler)
 
 
 def row_redshifts(data: DataSet, setting: Setting) -> list[tuple[int, float, float]]:

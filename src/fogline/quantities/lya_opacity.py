@@ -22,8 +22,17 @@ from fogline.atomic import LYMAN_ALPHA
 from fogline.datasets import DataSet
 from fogline.doppler import mean_equivalent_width
 from fogline.quadrature import column_nodes
-from fogline.quantities.base import Block, Setting, Term, assemble, bin_mean, row_redshifts
+from fogline.quantities.base import (
+    Block,
+    Setting,
+    Term,
+    assemble,
+    bin_mean,
+    over_doppler,
+    row_redshifts,
+)
 from fogline.quantities.spec import FileSpec, MetaKey, ValueColumn, column_key
+from fogline.settings import Distribution
 
 Array = NDArray[np.float64]
 
@@ -62,9 +71,12 @@ class LyaOpacity:
 
     def respond(self, data: DataSet, setting: Setting) -> Block:
         """Return one raw prediction, τ_eff, for every redshift node."""
+        return over_doppler(setting, lambda doppler: self._block(data, setting, doppler))
+
+    def _block(self, data: DataSet, setting: Setting, doppler: Distribution) -> Block:
         lo, hi = float(data.meta["log_nhi_min"]), float(data.meta["log_nhi_max"])
         log_nhi, d_nhi = column_nodes(lo, hi, setting.distribution.kinks)
-        width = mean_equivalent_width(log_nhi, setting.doppler) / LYMAN_ALPHA.wavelength
+        width = mean_equivalent_width(log_nhi, doppler) / LYMAN_ALPHA.wavelength
         nodes = row_redshifts(data, setting)
         terms = [
             (i, Term(z, log_nhi, (1.0 + z) * setting.cosmology.dx_dz(z) * width * d_nhi))
