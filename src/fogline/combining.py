@@ -43,11 +43,11 @@ def combine_ensembles(
     log : text stream
         Takes the verdict in words.
     """
-    prior = fit.posterior.prior
+    prior = fit.prior
     report = assess(
         results,
         fit.analysis.sampler,
-        fit.response.distribution.names,
+        prior.names,
         coordinates=prior.coordinate_names,
         to_parameters=prior.to_parameters,
     )
@@ -89,7 +89,8 @@ def parameter_table(theta: Array, report: ConvergenceReport) -> Table:
         table[name] = [float(getattr(parameter, name)) for parameter in report.parameters]
     table.meta["definition"] = (
         "log_f[p]: log10 of f(N_HI, X) in cm^2 at log N = p and the reference redshift; "
-        "evolution[p]: exponent of (1+z) at log N = p."
+        "evolution[p]: exponent of (1+z) at log N = p; doppler: km/s; scale[d]: factor on the "
+        "predictions of data set d; scatter[d]: added to its errors in quadrature, in their unit."
     )
     table.meta["converged"] = report.converged
     return table

@@ -50,6 +50,12 @@ class DataSet:
         Line of each row in the file, for messages.
     cosmology : Cosmology or None
         The cosmology that the file states.
+    logarithmic : bool
+        Whether `observed` and errors are in dex.
+    covariance : ndarray, shape (n_rows, n_rows) [unit squared], or None
+        Of the errors, where the file names one; its diagonal agrees with the errors.
+    linked : tuple of str
+        Files that were read with it, such as its covariance.
     """
 
     name: str
@@ -70,6 +76,9 @@ class DataSet:
     labels: tuple[str, ...]
     lines: tuple[int, ...]
     cosmology: Cosmology | None
+    logarithmic: bool = False
+    covariance: Array | None = None
+    linked: tuple[str, ...] = ()
 
     @property
     def n_rows(self) -> int:

@@ -50,7 +50,14 @@ class Posterior:
 
     @classmethod
     def of(cls, response: Response, prior: Prior) -> Posterior:
-        """Return the posterior of a response's own data sets."""
+        """Return the posterior of a response's own data sets.
+
+        Parameters
+        ----------
+        response : Response
+        prior : Prior
+            With the nuisance parameters of the response's data sets.
+        """
         return cls(response, prior, Likelihood.from_datasets(response.datasets))
 
     @property
@@ -76,9 +83,10 @@ class Posterior:
             Where the likelihood is NaN: a bug, reported with the parameters that made it.
         """
         # Heavy-tailed priors can ask for 10^400; such vectors are refused before they overflow.
-        n_pivots = len(self.response.distribution.pivots)
+        n_pivots, n_exponents, _ = self.response.distribution.shape
+        exponents = theta[:, n_pivots : n_pivots + n_exponents]
         usable = np.abs(theta[:, :n_pivots]).max(axis=1) < LARGEST_LOG_F
-        usable &= np.abs(theta[:, n_pivots:]).max(axis=1, initial=0.0) < LARGEST_EXPONENT
+        usable &= np.abs(exponents).max(axis=1, initial=0.0) < LARGEST_EXPONENT
         return self._ln_total(self.response.predict, theta, usable)
 
     def ln_prob(self, x: Array) -> Array:
@@ -113,7 +121,8 @@ class Posterior:
         if usable.any():
             kept = theta if usable.all() else theta[usable]
             with np.errstate(over="ignore", divide="ignore", invalid="ignore"):
-                out[usable] = self.likelihood.ln_total(predict(kept))
+                nuisances = kept[:, self.response.n_parameters :]
+                out[usable] = self.likelihood.ln_total(predict(kept), nuisances)
         _raise_on_nan(out[:, None], theta)
         return out
 

@@ -1,7 +1,8 @@
 """The posterior as a NetCDF file in the ArviZ schema, and draws read back from it.
 
-Groups: ``posterior`` (``log_f`` over pivots, ``evolution`` over evolution pivots), ``sample_stats``
-(``lp``, and the sampling coordinates), ``log_likelihood``, ``posterior_predictive`` and
+Groups: ``posterior`` (``log_f`` over pivots, ``evolution`` over evolution pivots and, where there
+are breaks, redshift segments; one variable for every other parameter), ``sample_stats`` (``lp``,
+and the sampling coordinates), ``log_likelihood``, ``posterior_predictive`` and
 ``observed_data`` with one variable per data set. A *chain* is an ensemble; its draws run walker by
 walker, each walker's steps in order, so that autocorrelation within a chain is that of its walkers.
 At most `MAX_DRAWS` draws an ensemble are kept, evenly thinned.
@@ -10,7 +11,7 @@ At most `MAX_DRAWS` draws an ensemble are kept, evenly thinned.
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Final
+from typing import Any, Final
 
 import arviz_base
 import numpy as np
@@ -39,24 +40,47 @@ def write_posterior(path: str | Path, fit: Fit, chains: Array, rng: np.random.Ge
         Draws the replicates.
     """
     x = thinned(chains)
-    n_pivots = len(fit.analysis.model.pivots)
-    theta = fit.posterior.prior.to_parameters(x.reshape(-1, x.shape[-1])).reshape(x.shape)
+    theta = fit.prior.to_parameters(x.reshape(-1, x.shape[-1])).reshape(x.shape)
+    distribution = fit.response.distribution
+    segments = ["segment"] if distribution.breaks else []
+    coords: dict[str, Any] = {
+        "pivot": np.array(distribution.pivots),
+        "evolution_pivot": np.array(distribution.evolution_pivots),
+        "coordinate": list(fit.prior.coordinate_names),
+    }
+    if segments:
+        coords["segment"] = list(distribution.segments)
     tree = arviz_base.from_dict(
         {
-            "posterior": {"log_f": theta[..., :n_pivots], "evolution": theta[..., n_pivots:]},
+            "posterior": _variables(fit, theta),
             "sample_stats": _sample_stats(fit, x),
             **_row_groups(fit, theta, rng),
         },
-        dims={"log_f": ["pivot"], "evolution": ["evolution_pivot"], "x": ["coordinate"]}
+        dims={
+            "log_f": ["pivot"],
+            "evolution": [*segments, "evolution_pivot"],
+            "x": ["coordinate"],
+        }
         | {data.name: [f"{data.name}_row"] for data in fit.response.datasets},
-        coords={
-            "pivot": np.array(fit.analysis.model.pivots),
-            "evolution_pivot": np.array(fit.analysis.model.evolution.pivots),
-            "coordinate": list(fit.posterior.prior.coordinate_names),
-        },
+        coords=coords,
     )
     tree.attrs.update({key: str(value) for key, value in fit.table_meta().items()})
     write_whole(path, lambda temporary: tree.to_netcdf(str(temporary), engine=ENGINE))
+
+
+def _variables(fit: Fit, theta: Array) -> dict[str, Array]:
+    """Return the parameters by variable, each of shape (n_ensembles, n_draws, ...)."""
+    distribution = fit.response.distribution
+    n_pivots, n_exponents, _ = distribution.shape
+    exponents = theta[..., n_pivots : n_pivots + n_exponents]
+    if distribution.breaks:
+        n_segments = len(distribution.segments)
+        exponents = exponents.reshape(*theta.shape[:2], n_segments, -1)
+    variables = {"log_f": theta[..., :n_pivots], "evolution": exponents}
+    others = fit.prior.names[n_pivots + n_exponents :]
+    return variables | {
+        name: theta[..., column] for column, name in enumerate(others, n_pivots + n_exponents)
+    }
 
 
 def _sample_stats(fit: Fit, x: Array) -> dict[str, Array]:
@@ -68,8 +92,9 @@ def _row_groups(fit: Fit, theta: Array, rng: np.random.Generator) -> dict[str, d
     """Return the groups with one variable per data set."""
     likelihood = fit.posterior.likelihood
     predicted = fit.response.predict(theta.reshape(-1, theta.shape[-1]))
-    drawn = likelihood.in_file_space(likelihood.replicate(predicted, rng))
-    ln_rows = likelihood.ln_rows(predicted)
+    nuisances = theta.reshape(-1, theta.shape[-1])[:, fit.response.n_parameters :]
+    drawn = likelihood.in_file_space(likelihood.replicate(predicted, rng, nuisances))
+    ln_rows = likelihood.ln_rows(predicted, nuisances)
     groups: dict[str, dict[str, Array]] = {
         "log_likelihood": {},
         "posterior_predictive": {},
@@ -106,8 +131,8 @@ def read_draws(path: str | Path, n_draws: int) -> Array:
     ndarray, shape (n, n_parameters)
     """
     with xarray.open_dataset(path, group="posterior", engine=ENGINE) as posterior:
-        theta = np.concatenate(
-            [posterior["log_f"].to_numpy(), posterior["evolution"].to_numpy()], axis=-1
-        )
-    flat = theta.reshape(-1, theta.shape[-1])
+        others = [name for name in posterior.data_vars if name not in ("log_f", "evolution")]
+        arrays = [posterior[name].to_numpy() for name in ("log_f", "evolution", *others)]
+    n_draws_in_all = arrays[0].shape[0] * arrays[0].shape[1]
+    flat = np.concatenate([array.reshape(n_draws_in_all, -1) for array in arrays], axis=1)
     return flat[np.linspace(0, len(flat) - 1, min(n_draws, len(flat))).astype(int)]

@@ -64,22 +64,20 @@ def check_predictive(response: Response, theta: Array, rng: np.random.Generator)
     ----------
     response : Response
     theta : ndarray, shape (n_draws, n_parameters)
-        Posterior draws.
+        Posterior draws, nuisance parameters included.
     rng : numpy.random.Generator
     """
     likelihood = Likelihood.from_datasets(response.datasets)
-    predicted = response.predict(theta)
-    drawn = likelihood.replicate(predicted, rng)
-    middle = np.median(predicted, axis=0)[None]
-    observed = np.broadcast_to(likelihood.observed, drawn.shape)
-    squares = (
-        _squares(likelihood, drawn, predicted),
-        _squares(likelihood, observed, predicted),
-    )
+    predicted, nuisances = response.predict(theta), theta[:, response.n_parameters :]
+    drawn = likelihood.replicate(predicted, rng, nuisances)
+    middle = np.median(predicted, axis=0)[None], np.median(nuisances, axis=0)[None]
+    squares = [
+        _squares(likelihood, data, predicted, nuisances) for data in (drawn, likelihood.observed)
+    ]
     return PredictiveCheck(
-        predicted=predicted,
+        predicted=likelihood.scaled(predicted, nuisances),
         replicates=likelihood.in_file_space(drawn),
-        pulls=likelihood.standardize(likelihood.observed, middle)[0],
+        pulls=likelihood.standardize(likelihood.observed, *middle)[0],
         p_values=_row_p_values(likelihood, drawn),
         dataset_p_values=tuple(
             _discrepancy_p_value(squares[0][:, rows].sum(axis=1), squares[1][:, rows].sum(axis=1))
@@ -88,8 +86,8 @@ def check_predictive(response: Response, theta: Array, rng: np.random.Generator)
     )
 
 
-def _squares(likelihood: Likelihood, data: Array, predicted: Array) -> Array:
-    pulls = likelihood.standardize(data, predicted)
+def _squares(likelihood: Likelihood, data: Array, predicted: Array, nuisances: Array) -> Array:
+    pulls = likelihood.standardize(data, predicted, nuisances)
     # A limit is at odds with the prediction on one side only.
     pulls = np.where(likelihood.limit > 0, np.minimum(pulls, 0.0), pulls)
     pulls = np.where(likelihood.limit < 0, np.maximum(pulls, 0.0), pulls)

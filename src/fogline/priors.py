@@ -21,7 +21,10 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import ndtr, ndtri
 
+from fogline.distribution import ColumnDistribution
 from fogline.distributions import frozen
+from fogline.doppler import DopplerGrid, doppler_grid
+from fogline.nuisances import Nuisance
 from fogline.settings import Distribution, ModelSettings
 
 Array = NDArray[np.float64]
@@ -74,31 +77,64 @@ def cut_quantile(spec: Distribution) -> Quantile:
     )
 
 
+def positive_map(spec: Distribution) -> Callable[[Array], Array]:
+    """Return the map x → quantile Φ(x) of a distribution cut to positive values.
+
+    Parameters
+    ----------
+    spec : mapping
+        scipy name under ``dist`` and its arguments.
+    """
+    quantile = cut_quantile(spec)
+    return lambda x: quantile(x, np.zeros(len(x)))
+
+
 @dataclass(frozen=True)
 class Prior:
-    """Prior of the parameter vector θ (log f at the pivots, exponents).
+    """Prior of the parameter vector θ.
+
+    Its entries: log f at the pivots, exponents of every redshift segment, shape of the form of high
+    columns, free Doppler argument, nuisance parameters of the data sets.
 
     Parameters
     ----------
     model : ModelSettings
         Pivots and priors.
+    nuisances : tuple of Nuisance
+        Nuisance parameters.
     """
 
     model: ModelSettings
+    nuisances: tuple[Nuisance, ...] = ()
 
     @property
     def n_dim(self) -> int:
         """Number of coordinates x, equal to the number of parameters."""
-        return len(self.model.pivots) + len(self.model.evolution.pivots)
+        return len(self.names)
+
+    @cached_property
+    def names(self) -> tuple[str, ...]:
+        """Names of the parameters, in order."""
+        doppler = () if self._doppler is None else (self._doppler.name,)
+        nuisances = tuple(nuisance.name for nuisance in self.nuisances)
+        return (*self._distribution.names, *doppler, *nuisances)
+
+    @cached_property
+    def _distribution(self) -> ColumnDistribution:
+        return ColumnDistribution.from_settings(self.model)
+
+    @cached_property
+    def _doppler(self) -> DopplerGrid | None:
+        return doppler_grid(self.model.doppler)
 
     @property
     def coordinate_names(self) -> tuple[str, ...]:
-        """Names of the coordinates x, in order: anchor, slope of every interval, exponents."""
+        """Names of the coordinates x, in order: anchor, slopes, then the other parameters."""
         model = self.model
         return (
             f"anchor[{model.prior.anchor_log_nhi}]",
             *(f"slope[{lo}-{hi}]" for lo, hi in pairwise(model.pivots)),
-            *(f"evolution[{pivot}]" for pivot in model.evolution.pivots),
+            *self.names[len(model.pivots) :],
         )
 
     @cached_property
@@ -113,8 +149,14 @@ class Prior:
         return unit_normal_map(prior.anchor), first, step
 
     @cached_property
-    def _exponent_maps(self) -> tuple[Callable[[Array], Array], ...]:
-        return tuple(unit_normal_map(spec) for spec in self.model.evolution.priors)
+    def _other_maps(self) -> tuple[Callable[[Array], Array], ...]:
+        """Maps of all parameters but the pivots'."""
+        evolution, high = self.model.evolution, self.model.high_column
+        free = [unit_normal_map(spec) for spec in evolution.priors] * (len(evolution.breaks) + 1)
+        free += [unit_normal_map(spec) for spec in (high.priors if high else ())]
+        positive = [self._doppler.prior] if self._doppler else []
+        positive += [nuisance.prior for nuisance in self.nuisances]
+        return (*free, *(positive_map(spec) for spec in positive))
 
     def ln_density(self, x: Array) -> Array:
         """Return the unit normal's ln density, shape (n,), at x, shape (n, n_dim)."""
@@ -130,14 +172,14 @@ class Prior:
         Returns
         -------
         ndarray, shape (n, n_dim)
-            log10 f at every pivot (decreasing), then the exponents.
+            log10 f at every pivot (decreasing), then the others.
         """
         n_pivots = len(self.model.pivots)
         # Proposals with heavy tails reach beyond 38σ, where Φ underflows; no sample ever does.
         x = np.clip(x, -FARTHEST, FARTHEST)
         theta = np.empty_like(x)
         theta[:, :n_pivots] = self._pivot_values(x[:, :n_pivots])
-        for column, quantile in enumerate(self._exponent_maps, start=n_pivots):
+        for column, quantile in enumerate(self._other_maps, start=n_pivots):
             theta[:, column] = quantile(x[:, column])
         return theta
 

@@ -78,7 +78,9 @@ def column_nodes(lo: float, hi: float, kinks: Iterable[float]) -> tuple[Array, A
     return log_nhi, np.concatenate([w for _, w in panels]) * LN10 * 10.0**log_nhi
 
 
-def redshift_nodes(z_lo: float, z_hi: float, cosmology: Cosmology) -> tuple[Array, Array]:
+def redshift_nodes(
+    z_lo: float, z_hi: float, cosmology: Cosmology, kinks: Iterable[float] = ()
+) -> tuple[Array, Array]:
     """Return nodes and weights of a mean over a redshift bin, weighted by absorption distance.
 
     Parameters
@@ -87,6 +89,8 @@ def redshift_nodes(z_lo: float, z_hi: float, cosmology: Cosmology) -> tuple[Arra
         The bin; a single node where they are equal.
     cosmology : Cosmology
         Gives the absorption distance.
+    kinks : iterable of float, optional
+        Redshifts at which f is not smooth; those outside the bin are passed over.
 
     Returns
     -------
@@ -97,7 +101,13 @@ def redshift_nodes(z_lo: float, z_hi: float, cosmology: Cosmology) -> tuple[Arra
         return np.array([z_lo]), np.ones(1)
     # n nodes integrate (1+z)^γ over a bin of width w in ln(1+z) with an error near
     # (γ w)^(2n) / (2n)!; this keeps exponents of 8, and the flux at τ = 2, below 3e-5.
-    n_nodes = REDSHIFT_NODES + math.ceil(REDSHIFT_NODES_PER_LN * math.log((1 + z_hi) / (1 + z_lo)))
-    z, weights = interval_nodes(z_lo, z_hi, n_nodes)
+    edges = [z_lo, *sorted(k for k in kinks if z_lo < k < z_hi), z_hi]
+    panels = [
+        interval_nodes(
+            a, b, REDSHIFT_NODES + math.ceil(REDSHIFT_NODES_PER_LN * math.log((1 + b) / (1 + a)))
+        )
+        for a, b in pairwise(edges)
+    ]
+    z, weights = (np.concatenate(part) for part in zip(*panels, strict=True))
     weights = weights * cosmology.dx_dz(z)
     return z, weights / weights.sum()

@@ -20,7 +20,8 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from fogline.datasets import DataSet
-from fogline.distribution import ColumnDistribution
+from fogline.distribution import ColumnDistribution, Points
+from fogline.doppler import DopplerGrid
 from fogline.quantities import QUANTITIES, Block, Setting
 
 Array = NDArray[np.float64]
@@ -41,19 +42,33 @@ class Response:
         What is predicted.
     blocks : tuple of Block
         One per data set.
+    doppler : DopplerGrid, optional
+        Of a free Doppler argument, a parameter that follows those of f.
     """
 
     distribution: ColumnDistribution
     datasets: tuple[DataSet, ...]
     blocks: tuple[Block, ...]
+    doppler: DopplerGrid | None = None
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        """Names of the parameters that predictions depend on: f's, and a free Doppler argument."""
+        return self.distribution.names + ((self.doppler.name,) if self.doppler else ())
+
+    @property
+    def n_parameters(self) -> int:
+        """Number of parameters that predictions depend on; any that follow are not read."""
+        return self.distribution.n_parameters + (self.doppler is not None)
 
     @cached_property
-    def bases(self) -> tuple[Array, ...]:
-        """Matrix from expanded parameters to ln f of each block, shape (n_expanded, n_points)."""
-        return tuple(
-            np.ascontiguousarray(self.distribution.basis(block.log_nhi, block.z))
-            for block in self.blocks
-        )
+    def points(self) -> tuple[Points, ...]:
+        """The points of each block, prepared."""
+        return tuple(self.distribution.points(block.log_nhi, block.z) for block in self.blocks)
+
+    def mix(self, theta: Array) -> Array | None:
+        """Return the weights of the nodes of a free Doppler argument, shape (n, n_nodes)."""
+        return doppler_mix(self.distribution, self.doppler, theta)
 
     @cached_property
     def slices(self) -> tuple[slice, ...]:
@@ -65,7 +80,7 @@ class Response:
 
         Parameters
         ----------
-        theta : array_like, shape (n, n_parameters) or (n_parameters,)
+        theta : array_like, shape (n, n_parameters or more) or (n_parameters or more,)
 
         Returns
         -------
@@ -78,37 +93,66 @@ class Response:
         return np.concatenate(chunks).reshape(*theta.shape[:-1], -1)
 
     def _predict(self, theta: Array) -> Array:
-        expanded = self.distribution.expand(theta)
+        expanded, mix = self.distribution.expand(theta), self.mix(theta)
         parts = []
         # Block by block, so that f stays in cache between its exponential and its weights.
-        for data, block, basis in zip(self.datasets, self.blocks, self.bases, strict=True):
-            raw = _raw(expanded, basis, block.weights)
+        for data, block, points in zip(self.datasets, self.blocks, self.points, strict=True):
+            raw = mixed(_raw(self.distribution, expanded, points, block), block, mix)
             parts.append(QUANTITIES[data.quantity].reduce(data, raw, block.constants))
         return np.concatenate(parts, axis=-1)
 
 
-def raw_predictions(distribution: ColumnDistribution, block: Block, theta: Array) -> Array:
+def raw_predictions(setting: Setting, block: Block, theta: Array) -> Array:
     """Return the raw predictions of one block: integrals of f, before any `reduce`.
 
     Parameters
     ----------
-    distribution : ColumnDistribution
+    setting : Setting
     block : Block
-    theta : ndarray, shape (n, n_parameters)
+    theta : ndarray, shape (n, n_parameters or more)
 
     Returns
     -------
     ndarray, shape (n, n_raw)
     """
-    basis = distribution.basis(block.log_nhi, block.z)
+    distribution = setting.distribution
+    points = distribution.points(block.log_nhi, block.z)
     chunks = [theta[i : i + CHUNK] for i in range(0, len(theta), CHUNK)]
-    return np.concatenate([_raw(distribution.expand(t), basis, block.weights) for t in chunks])
+    raw = [_raw(distribution, distribution.expand(t), points, block) for t in chunks]
+    mix = doppler_mix(distribution, setting.doppler_grid, theta)
+    return mixed(np.concatenate(raw), block, mix)
 
 
-def _raw(expanded: Array, basis: Array, weights: Array) -> Array:
-    f = expanded @ basis
+def _raw(distribution: ColumnDistribution, expanded: Array, points: Points, block: Block) -> Array:
+    f = distribution.ln_f(expanded, points)
     np.exp(f, out=f)
-    return np.asarray(f @ weights)
+    return np.asarray(f @ block.weights)
+
+
+def doppler_mix(
+    distribution: ColumnDistribution, doppler: DopplerGrid | None, theta: Array
+) -> Array | None:
+    """Return the weights of the nodes of a free Doppler argument, shape (n, n_nodes), or None."""
+    return None if doppler is None else doppler.mix(theta[:, distribution.n_parameters])
+
+
+def mixed(raw: Array, block: Block, mix: Array | None) -> Array:
+    """Interpolate raw predictions between the nodes of a free Doppler argument.
+
+    Parameters
+    ----------
+    raw : ndarray, shape (n, n_raw * n_doppler)
+    block : Block
+    mix : ndarray, shape (n, n_doppler), or None
+
+    Returns
+    -------
+    ndarray, shape (n, n_raw)
+    """
+    if block.n_doppler == 1:
+        return raw
+    assert mix is not None
+    return np.asarray(np.einsum("nrk,nk->nr", raw.reshape(len(raw), -1, block.n_doppler), mix))
 
 
 def build_response(datasets: Sequence[DataSet], setting: Setting) -> Response:
@@ -124,7 +168,7 @@ def build_response(datasets: Sequence[DataSet], setting: Setting) -> Response:
     Response
     """
     blocks = [QUANTITIES[data.quantity].respond(data, setting) for data in datasets]
-    return Response(setting.distribution, tuple(datasets), tuple(blocks))
+    return Response(setting.distribution, tuple(datasets), tuple(blocks), setting.doppler_grid)
 
 
 def _slices(sizes: Sequence[int]) -> tuple[slice, ...]:

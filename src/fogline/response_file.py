@@ -19,6 +19,7 @@ import numpy as np
 from fogline.cosmology import Cosmology
 from fogline.datasets import DataSet
 from fogline.distribution import ColumnDistribution
+from fogline.nuisances import nuisances_of
 from fogline.posterior import Posterior
 from fogline.priors import Prior
 from fogline.provenance import code_hash, file_hash, settings_hash, to_json, version
@@ -39,6 +40,9 @@ ARRAYS = (
     "log_nhi_hi",
 )
 """Fields of `DataSet` that are arrays over rows."""
+
+OPTIONAL_ARRAYS = ("covariance",)
+"""Fields of `DataSet` that are arrays or None."""
 
 
 @dataclass(frozen=True)
@@ -65,7 +69,12 @@ class Fit:
     @property
     def posterior(self) -> Posterior:
         """Posterior of the analysis."""
-        return Posterior.of(self.response, Prior(self.analysis.model))
+        return Posterior.of(self.response, self.prior)
+
+    @property
+    def prior(self) -> Prior:
+        """Prior of all parameters, nuisance parameters included."""
+        return Prior(self.analysis.model, nuisances_of(self.response.datasets))
 
     @property
     def fingerprint(self) -> str:
@@ -100,9 +109,14 @@ def build_fit(analysis: AnalysisSettings, datasets: list[DataSet]) -> Fit:
     datasets : list of DataSet
         Validated; their files still exist and are hashed.
     """
-    inputs = {data.path: file_hash(data.path) for data in datasets}
+    paths = [path for data in datasets for path in (data.path, *data.linked)]
+    inputs = {path: file_hash(path) for path in paths}
     fingerprint = settings_hash(
-        sorted(inputs.items()), analysis.model, analysis.cosmology, code_hash("fogline.posterior")
+        sorted(inputs.items()),
+        analysis.model,
+        analysis.cosmology,
+        analysis.nuisances,
+        code_hash("fogline.posterior"),
     )
     provenance = {"fogline_version": version(), "fingerprint": fingerprint, "inputs": inputs}
     return Fit(analysis, build_response(datasets, setting_of(analysis)), provenance)
@@ -121,13 +135,16 @@ def _write(fit: Fit, path: Path) -> None:
             zip(fit.response.datasets, fit.response.blocks, strict=True)
         ):
             group = file.create_group(f"datasets/{i:03d}")
-            scalars = {f.name: getattr(data, f.name) for f in fields(data) if f.name not in ARRAYS}
+            arrays = (*ARRAYS, *OPTIONAL_ARRAYS)
+            scalars = {f.name: getattr(data, f.name) for f in fields(data) if f.name not in arrays}
             scalars["cosmology"] = _plain_cosmology(data.cosmology)
             group.attrs["dataset"] = to_json(scalars)
-            for name in ARRAYS:
-                group[f"rows/{name}"] = getattr(data, name)
+            for name in arrays:
+                if getattr(data, name) is not None:
+                    group[f"rows/{name}"] = getattr(data, name)
             for name in ("log_nhi", "z", "weights"):
                 group[f"block/{name}"] = getattr(block, name)
+            group["block"].attrs["n_doppler"] = block.n_doppler
             for name, values in block.constants.items():
                 group[f"constants/{name}"] = values
 
@@ -156,20 +173,25 @@ def load_fit(path: str | Path, analysis: AnalysisSettings | None = None) -> Fit:
         blocks = tuple(_read_block(group) for group in groups)
     if analysis is not None:
         stored = replace(stored, sampler=analysis.sampler, derive=analysis.derive)
-    distribution = ColumnDistribution.from_settings(stored.model)
-    return Fit(stored, Response(distribution, datasets, blocks), provenance)
+    setting = setting_of(stored)
+    response = Response(setting.distribution, datasets, blocks, setting.doppler_grid)
+    return Fit(stored, response, provenance)
 
 
 def _read_dataset(group: h5py.Group) -> DataSet:
     scalars = json.loads(group.attrs["dataset"])
     cosmology = scalars.pop("cosmology")
-    for name in ("labels", "lines"):
+    for name in ("labels", "lines", "linked"):
         scalars[name] = tuple(scalars[name])
-    rows = {name: group[f"rows/{name}"][()] for name in ARRAYS}
+    present = [name for name in (*ARRAYS, *OPTIONAL_ARRAYS) if name in group["rows"]]
+    rows = {name: group[f"rows/{name}"][()] for name in present}
     return DataSet(**scalars, **rows, cosmology=Cosmology(**cosmology) if cosmology else None)
 
 
 def _read_block(group: h5py.Group) -> Block:
     arrays = {name: np.asarray(group[f"block/{name}"][()]) for name in ("log_nhi", "z", "weights")}
     constants = group.get("constants", {})
-    return Block(**arrays, constants={name: constants[name][()] for name in constants})
+    n_doppler = int(group["block"].attrs["n_doppler"])
+    return Block(
+        **arrays, constants={name: constants[name][()] for name in constants}, n_doppler=n_doppler
+    )

@@ -29,6 +29,16 @@ class EvolutionSettings:
 
     pivots: tuple[float, ...]
     priors: tuple[Distribution, ...]  # one per evolution pivot
+    breaks: tuple[float, ...] = ()  # redshifts at which every exponent changes
+
+
+@dataclass(frozen=True)
+class HighColumnSettings:
+    """A form of f in place of the spline above its last pivot."""
+
+    form: str
+    top: float  # highest column at which f is defined
+    priors: tuple[Distribution, ...]  # one per shape parameter
 
 
 @dataclass(frozen=True)
@@ -54,7 +64,10 @@ class ModelSettings:
     pivots: tuple[float, ...]
     evolution: EvolutionSettings
     prior: SplinePriorSettings
-    doppler: Distribution  # {dist: fixed, b: 26.0}, {dist: hui_rutledge, b_sigma: 24.0} or scipy
+    # {dist: fixed, b: 26.0}, {dist: hui_rutledge, b_sigma: 24.0} or scipy; an argument that is
+    # itself a distribution is a free parameter with that prior.
+    doppler: Mapping[str, Any]
+    high_column: HighColumnSettings | None = None
 
 
 @dataclass(frozen=True)
@@ -92,6 +105,8 @@ class AnalysisSettings:
     model: ModelSettings
     sampler: SamplerSettings
     derive: DeriveSettings
+    # By data set: scale, scatter, student_dof, as the file's meta may state them too.
+    nuisances: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -113,6 +128,9 @@ def analysis_from_plain(plain: Mapping[str, Any]) -> AnalysisSettings:
     model = {key: _tupled(value) for key, value in plain["model"].items()}
     model["evolution"] = EvolutionSettings(**{k: _tupled(v) for k, v in model["evolution"].items()})
     model["prior"] = SplinePriorSettings(**model["prior"])
+    if model.get("high_column"):
+        high = {k: _tupled(v) for k, v in model["high_column"].items()}
+        model["high_column"] = HighColumnSettings(**high)
     return AnalysisSettings(
         name=plain["name"],
         datasets=tuple(plain["datasets"]),
@@ -120,6 +138,7 @@ def analysis_from_plain(plain: Mapping[str, Any]) -> AnalysisSettings:
         model=ModelSettings(**model),
         sampler=SamplerSettings(**{k: _tupled(v) for k, v in plain["sampler"].items()}),
         derive=DeriveSettings(**{k: _tupled(v) for k, v in plain["derive"].items()}),
+        nuisances=plain.get("nuisances", {}),
     )
 
 

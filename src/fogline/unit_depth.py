@@ -16,6 +16,9 @@ highest source). Accuracy against adaptive quadrature: ``tests/properties/test_a
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from itertools import pairwise
+
 import numpy as np
 from numpy.polynomial import chebyshev
 from numpy.typing import ArrayLike, NDArray
@@ -61,12 +64,67 @@ def interpolation_matrix(nodes: Array, points: Array) -> Array:
     return np.asarray(chebyshev.chebvander(to_unit(points), degree) @ np.linalg.inv(vandermonde))
 
 
-def redshift_grid(z_max: float) -> Array:
-    """Return redshifts, shape (Z_NODES,), on which f is tabulated from 0 to `z_max`."""
+def redshift_grid(z_max: float, breaks: Sequence[float] = ()) -> Array:
+    """Return redshifts on which f is tabulated from 0 to `z_max`.
+
+    Parameters
+    ----------
+    z_max : float
+    breaks : sequence of float, optional
+        Redshifts at which f has kinks: each segment has nodes of its own.
+
+    Returns
+    -------
+    ndarray, shape (n_segments * Z_NODES,)
+    """
     # First-kind points do not reach the ends; stretched so that they do, no point extrapolates.
     points = chebyshev.chebpts1(Z_NODES)
-    half = 0.5 * np.log1p(z_max)
-    return np.expm1(half * (1.0 + points / points.max()))
+    edges = np.log1p([0.0, *_inside(breaks, 0.0, z_max), z_max])
+    nodes = [lo + 0.5 * (hi - lo) * (1.0 + points / points.max()) for lo, hi in pairwise(edges)]
+    return np.expm1(np.concatenate(nodes))
+
+
+def grid_interpolation(grid: Array, breaks: Sequence[float], z: Array) -> Array:
+    """Return M for which ``g(z) = M @ g(grid)``, shape (n_points, n_grid), g smooth but at breaks.
+
+    Parameters
+    ----------
+    grid : ndarray, shape (n_grid,)
+        From `redshift_grid` with the same breaks.
+    breaks : sequence of float
+    z : ndarray, shape (n_points,)
+        Up to the last redshift of the grid.
+    """
+    matrix = np.zeros((len(z), len(grid)))
+    inner = _inside(breaks, 0.0, float(grid[-1]))
+    segment = np.searchsorted(inner, z, side="right")
+    for i in range(len(inner) + 1):
+        nodes, here = slice(i * Z_NODES, (i + 1) * Z_NODES), segment == i
+        matrix[here, nodes] = interpolation_matrix(np.log1p(grid[nodes]), np.log1p(z[here]))
+    return matrix
+
+
+def path_nodes(z_near: float, z_far: float, breaks: Sequence[float]) -> tuple[Array, Array]:
+    """Return redshift nodes and weights of integrals over dz along a path; panels end at breaks.
+
+    Parameters
+    ----------
+    z_near, z_far : float
+    breaks : sequence of float
+
+    Returns
+    -------
+    z, weights : ndarray, shape (n_nodes,)
+    """
+    edges = np.log1p([z_near, *_inside(breaks, z_near, z_far), z_far])
+    panels = [interval_nodes(lo, hi, PATH_NODES) for lo, hi in pairwise(edges)]
+    path, d_path = (np.concatenate(part) for part in zip(*panels, strict=True))
+    # dz = (1 + z) d ln(1 + z).
+    return np.expm1(path), d_path * np.exp(path)
+
+
+def _inside(breaks: Sequence[float], lo: float, hi: float) -> list[float]:
+    return [b for b in breaks if lo < b < hi]
 
 
 def continuum_weights(
@@ -83,7 +141,7 @@ def continuum_weights(
     z_near, z_far : float
         z_912 and z_em.
     grid : ndarray, shape (n_z,)
-        Redshifts at which f is tabulated.
+        Redshifts at which f is tabulated: `redshift_grid` with the distribution's breaks.
     distribution : ColumnDistribution
     cosmology : Cosmology
         Cosmology of f(N, X).
@@ -93,16 +151,13 @@ def continuum_weights(
     log_nhi : ndarray, shape (n_columns,) [dex of cm^-2]
     weights : ndarray, shape (n_z, n_columns)
     """
-    log_nhi, d_nhi = column_nodes(
-        distribution.pivots[0], distribution.pivots[-1], distribution.kinks
-    )
-    path, d_path = interval_nodes(np.log1p(z_near), np.log1p(z_far), PATH_NODES)
-    ratio = np.exp(path) / (1.0 + z_near)
+    log_nhi, d_nhi = column_nodes(*distribution.column_range, distribution.kinks)
+    z, dz = path_nodes(z_near, z_far, distribution.breaks)
+    ratio = (1.0 + z) / (1.0 + z_near)
     depth = 10.0**log_nhi * photoionization_cross_section(ratio)[:, None]
     absorbed = -np.expm1(-depth) * d_nhi
-    # dz = (1 + z) d ln(1 + z).
-    along = d_path * np.exp(path) * cosmology.dx_dz(np.expm1(path))
-    interpolate = interpolation_matrix(np.log1p(grid), path)
+    along = dz * cosmology.dx_dz(z)
+    interpolate = grid_interpolation(grid, distribution.breaks, z)
     return log_nhi, np.einsum("p,pz,pn->zn", along, interpolate, absorbed, optimize=True)
 
 

@@ -7,6 +7,8 @@ precision, as does a scale of every raw prediction::
 
     raw = scale · [exp{(expand(θ) − expand(θ_0)) @ basis} @ (f_0 · weights / scale)]
 
+with what a form of high columns adds in the exponent.
+
 Predictions agree with those of `fogline.response.Response` to 1e-5 over draws from the prior and to
 2e-6 near a posterior (``tests/unit/test_walkers.py``); everything that users read
 (predictions, derived tables, replicates) is computed in double precision.
@@ -20,14 +22,18 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
+from fogline.distribution import LN10
 from fogline.quantities import QUANTITIES
-from fogline.response import Response
+from fogline.response import Response, mixed
 
 Array = NDArray[np.float64]
 Single = NDArray[np.float32]
 
 LARGEST_LN_RATIO = 80.0
 """ln(f/f_0) above which single precision overflows (at 88.7)."""
+
+LEAST_LN_RATIO = -200.0
+"""ln(f/f_0) of a form of high columns below which nothing is left, however far it falls."""
 
 
 @dataclass(frozen=True)
@@ -53,19 +59,27 @@ class WalkerResponse:
     def _blocks(self) -> list[tuple[Single, Single, Array]]:
         """Basis, weights and scale of every block."""
         blocks = []
-        for block, basis in zip(self.response.blocks, self.response.bases, strict=True):
-            weights = np.exp(self._expanded @ basis)[:, None] * block.weights
+        for block, points in zip(self.response.blocks, self.response.points, strict=True):
+            ln_f = self.response.distribution.ln_f(self._expanded[None], points)[0]
+            weights = np.exp(ln_f)[:, None] * block.weights
             scale = np.abs(weights).max(axis=0)
-            blocks.append((basis.astype(np.float32), (weights / scale).astype(np.float32), scale))
+            single = points.basis.astype(np.float32), (weights / scale).astype(np.float32)
+            blocks.append((*single, scale))
         return blocks
 
     @cached_property
-    def _reach(self) -> tuple[float, float]:
-        """Bounds of |d ln f| per unit change of log f at a pivot, and of an exponent."""
+    def _shapes(self) -> list[Array]:
+        """What the form of high columns adds to ln f at the reference, for every block."""
         distribution = self.response.distribution
-        n_exponents = len(distribution.evolution_pivots)
-        stretch = max(np.abs(basis[-n_exponents:]).max() for basis in self.response.bases)
-        return float(np.log(10.0)), float(stretch)
+        return [distribution.ln_shape(self._expanded[None], p) for p in self.response.points]
+
+    @cached_property
+    def _stretch(self) -> float:
+        """Bound of |d ln f| per unit change of all exponents together."""
+        n_pivots, n_exponents, _ = self.response.distribution.shape
+        exponents = slice(2 * n_pivots, 2 * n_pivots + n_exponents)
+        sums = [np.abs(p.basis[exponents]).sum(axis=0).max() for p in self.response.points]
+        return float(max(sums))
 
     def in_range(self, theta: Array) -> NDArray[np.bool_]:
         """Return which parameter vectors single precision can hold.
@@ -78,14 +92,25 @@ class WalkerResponse:
         -------
         ndarray of bool, shape (n,)
         """
-        per_pivot, per_exponent = self._reach
-        n_pivots = len(self.response.distribution.pivots)
-        away = np.abs(theta - self.reference)
+        distribution = self.response.distribution
+        n_pivots, n_exponents, _ = distribution.shape
+        away = np.abs(theta[:, : n_pivots + n_exponents] - self.reference[: n_pivots + n_exponents])
         # The spline is monotone between pivots: it departs no further than its pivots do, plus
         # what the reference itself falls within an interval.
-        ln_ratio = per_pivot * (away[:, :n_pivots].max(axis=1) + self._fall)
-        ln_ratio += per_exponent * away[:, n_pivots:].max(axis=1, initial=0.0)
+        ln_ratio = LN10 * (away[:, :n_pivots].max(axis=1) + self._fall)
+        ln_ratio += self._stretch * away[:, n_pivots:].max(axis=1, initial=0.0)
+        if distribution.form:
+            ln_ratio += self._shape_reach(theta)
         return np.asarray(ln_ratio < LARGEST_LN_RATIO)
+
+    def _shape_reach(self, theta: Array) -> Array:
+        """Return how far the form of high columns rises above its reference."""
+        distribution = self.response.distribution
+        columns = np.linspace(distribution.pivots[-1], distribution.column_range[1], 12)
+        points = distribution.points(columns[1:], np.full(11, distribution.reference_redshift))
+        now = distribution.ln_shape(distribution.expand(theta), points)
+        then = distribution.ln_shape(self._expanded[None], points)
+        return np.asarray((now - then).max(axis=1, initial=0.0))
 
     @cached_property
     def _fall(self) -> float:
@@ -104,15 +129,19 @@ class WalkerResponse:
         -------
         ndarray, shape (n, n_rows)
         """
-        shift = self.response.distribution.expand(theta) - self._expanded
-        single = shift.astype(np.float32)
+        response = self.response
+        expanded, mix = response.distribution.expand(theta), response.mix(theta)
+        single = (expanded - self._expanded).astype(np.float32)
         parts = []
         # Block by block, so that f stays in cache between its exponential and its weights.
-        for data, block, (basis, weights, scale) in zip(
-            self.response.datasets, self.response.blocks, self._blocks, strict=True
-        ):
+        for i, (data, block) in enumerate(zip(response.datasets, response.blocks, strict=True)):
+            basis, weights, scale = self._blocks[i]
             ratio = single @ basis
+            if response.distribution.form:
+                points = response.points[i]
+                shape = response.distribution.ln_shape(expanded, points) - self._shapes[i]
+                ratio[:, points.high] += np.maximum(shape, LEAST_LN_RATIO)
             np.exp(ratio, out=ratio)
-            raw = (ratio @ weights) * scale
+            raw = mixed((ratio @ weights) * scale, block, mix)
             parts.append(QUANTITIES[data.quantity].reduce(data, raw, block.constants))
         return np.concatenate(parts, axis=-1)

@@ -60,7 +60,7 @@ def test_comment_in_the_config_reruns_nothing(finished: StudyFolder, tmp_path: P
 
 @pytest.mark.parametrize(
     ("module", "first"),
-    [("figures/pulls.py", "draw_figures"), ("likelihood.py", "build_response")],
+    [("figures/pulls.py", "draw_figures"), ("likelihood/rows.py", "build_response")],
 )
 def test_changed_code_reruns_what_uses_it(
     finished: StudyFolder, tmp_path: Path, module: str, first: str

@@ -65,7 +65,7 @@ class Draws:
 
     def integrate(self, block: Block) -> Array:
         """Return the raw predictions of a block, shape (n_draws, n_raw)."""
-        return raw_predictions(self.setting.distribution, block, self.theta)
+        return raw_predictions(self.setting, block, self.theta)
 
     def clip(self, lo: float, hi: float) -> tuple[float, float]:
         """Return a column range cut to the pivots; empty where it lies outside."""

@@ -11,7 +11,8 @@ mean over a redshift bin of whatever was measured. All physics sits in points an
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
+from functools import cached_property
 from typing import Protocol
 
 import numpy as np
@@ -20,6 +21,7 @@ from numpy.typing import NDArray
 from fogline.cosmology import Cosmology
 from fogline.datasets import DataSet
 from fogline.distribution import ColumnDistribution
+from fogline.doppler import DopplerGrid, doppler_grid
 from fogline.quadrature import redshift_nodes
 from fogline.quantities.spec import FileSpec
 from fogline.settings import Distribution
@@ -45,10 +47,15 @@ class Setting:
     cosmology: Cosmology
     doppler: Distribution
 
+    @cached_property
+    def doppler_grid(self) -> DopplerGrid | None:
+        """The grid of a free Doppler argument; None where there is none."""
+        return doppler_grid(self.doppler)
+
     @property
     def column_range(self) -> tuple[float, float]:
-        """First and last pivot [dex of cm^-2]."""
-        return self.distribution.pivots[0], self.distribution.pivots[-1]
+        """Lowest and highest column at which f is defined [dex of cm^-2]."""
+        return self.distribution.column_range
 
 
 @dataclass(frozen=True)
@@ -63,12 +70,16 @@ class Block:
         ``raw = f @ weights``.
     constants : mapping of str to ndarray
         What `Quantity.reduce` needs beside the raw predictions.
+    n_doppler : int
+        Nodes of a free Doppler argument: weights then hold every raw prediction at each node, the
+        node running fastest.
     """
 
     log_nhi: Array
     z: Array
     weights: Array
     constants: Mapping[str, Array] = field(default_factory=dict)
+    n_doppler: int = 1
 
 
 class Quantity(Protocol):
@@ -146,7 +157,12 @@ def over_doppler(setting: Setting, build: Callable[[Distribution], Block]) -> Bl
         Makes the block for one ``doppler`` block of the config (it must use this argument, not
         ``setting.doppler``).
     """
-    return build(setting.doppler)
+    grid = setting.doppler_grid
+    if grid is None:
+        return build(setting.doppler)
+    blocks = [build(settings) for settings in grid.settings]
+    weights = np.stack([block.weights for block in blocks], axis=2)
+    return replace(blocks[0], weights=weights.reshape(len(weights), -1), n_doppler=len(blocks))
 
 
 def row_redshifts(data: DataSet, setting: Setting) -> list[tuple[int, float, float]]:
@@ -155,10 +171,11 @@ def row_redshifts(data: DataSet, setting: Setting) -> list[tuple[int, float, flo
     The weights are those of the data's own absorption distance, and add up to 1 for each row.
     """
     cosmology = data.cosmology or setting.cosmology
+    breaks = setting.distribution.breaks
     return [
         (row, float(z), float(weight))
         for row, (lo, hi) in enumerate(zip(data.z_lo, data.z_hi, strict=True))
-        for z, weight in zip(*redshift_nodes(lo, hi, cosmology), strict=True)
+        for z, weight in zip(*redshift_nodes(lo, hi, cosmology, breaks), strict=True)
     ]
 
 

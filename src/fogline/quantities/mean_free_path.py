@@ -121,7 +121,7 @@ class MeanFreePath:
         cosmology = data.cosmology or setting.cosmology
         nodes = row_redshifts(data, setting)
         z_em = np.array([z for _, z, _ in nodes])
-        grid = redshift_grid(float(z_em.max()))
+        grid = redshift_grid(float(z_em.max()), setting.distribution.breaks)
         weights = []
         for z in z_em:
             log_nhi, rows = depth_coefficients(
