@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import os
 import re
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from typing import Any, Final
 
 from fogline.config_checks import block_faults, distribution_faults
@@ -195,9 +195,20 @@ def _analysis(
     if not missing:
         blocks = _with_defaults(blocks)
         missing.extend(block_faults(blocks, name))
+        missing.extend(_unknown_datasets(blocks["nuisances"], files))
     for place, what in missing:
         faults.add(layers.origin(place) if place else (), what)
     return None if missing else analysis_settings(name, files, blocks)
+
+
+def _unknown_datasets(
+    nuisances: Mapping[str, Any], files: tuple[str, ...]
+) -> Iterator[PlacedFault]:
+    stems = [os.path.splitext(os.path.basename(path))[0] for path in files]
+    for name in nuisances:
+        if name not in stems:
+            what = f"nuisances: the analysis has no data set '{name}'; {nearest(str(name), stems)}"
+            yield ("nuisances", name), what
 
 
 def _with_defaults(blocks: Mapping[str, Any]) -> dict[str, Any]:

@@ -6,11 +6,16 @@ from collections.abc import Callable, Iterator, Mapping, Sequence
 from typing import Any
 
 from fogline.config_schema import PlacedFault
+from fogline.config_settings import HIGH_COLUMN_PRIORS
 from fogline.cosmology_keys import cosmology_faults
+from fogline.faults import nearest
 from fogline.settings import Study
 from fogline.yaml_lines import Place, dotted
 
 _MOST_REDSHIFTS = 10_000
+
+FREE_NUISANCES = ("scale", "scatter")
+"""Keys of ``nuisances`` that add a parameter each."""
 
 
 def block_faults(blocks: Mapping[str, Any], name: str) -> Iterator[PlacedFault]:
@@ -54,7 +59,29 @@ def _model_faults(model: Mapping[str, Any]) -> Iterator[PlacedFault]:
                 f"{pivots[0]:g} to {pivots[-1]:g}"
             )
             yield (*place, i), what
+    yield from _increasing(evolution["breaks"], ("model", "evolution", "breaks"))
     yield from _prior_faults(model)
+    if model["high_column"] is not None:
+        yield from _high_column_faults(model)
+
+
+def _high_column_faults(model: Mapping[str, Any]) -> Iterator[PlacedFault]:
+    high, pivots = model["high_column"], model["pivots"]
+    place: Place = ("model", "high_column")
+    allowed = pivots[2:-1]
+    if high["above"] not in allowed:
+        listed = ", ".join(f"{pivot:g}" for pivot in allowed) or "none here: there are too few"
+        what = f"model.high_column.above is {high['above']:g}, must be one of the pivots {listed}"
+        yield (*place, "above"), f"{what} (two below it, one above where f ends)"
+    anchor = model["prior"]["anchor"].get("log_nhi")
+    if anchor is not None and anchor > high["above"]:
+        what = f"model.prior.anchor.log_nhi is {anchor:g}, must be at most model.high_column.above"
+        yield ("model", "prior", "anchor", "log_nhi"), f"{what} = {high['above']:g}"
+    known = HIGH_COLUMN_PRIORS[high["form"]]
+    for name in high["prior"]:
+        if name not in known:
+            what = f"{high['form']} has no parameter '{name}'; {nearest(str(name), known)}"
+            yield (*place, "prior", name), what
 
 
 def _prior_faults(model: Mapping[str, Any]) -> Iterator[PlacedFault]:
@@ -71,8 +98,8 @@ def _prior_faults(model: Mapping[str, Any]) -> Iterator[PlacedFault]:
 
 
 def _sampler_faults(blocks: Mapping[str, Any], name: str) -> Iterator[PlacedFault]:
-    sampler, model = blocks["sampler"], blocks["model"]
-    n = len(model["pivots"]) + len(model["evolution"]["pivots"])
+    sampler = blocks["sampler"]
+    n = _n_parameters(blocks)
     walkers = sampler["walkers"]
     if walkers % 2 or walkers < 2 * n:
         what = (
@@ -87,6 +114,21 @@ def _sampler_faults(blocks: Mapping[str, Any], name: str) -> Iterator[PlacedFaul
             "one for each round of sampler.warm_up"
         )
         yield ("sampler", "components"), what
+
+
+def _n_parameters(blocks: Mapping[str, Any]) -> int:
+    """Return the number of parameters, without those that constraint files ask for themselves."""
+    model = blocks["model"]
+    evolution, high = model["evolution"], model["high_column"]
+    n = len(evolution["pivots"]) * (len(evolution["breaks"]) + 1)
+    if high is None:
+        n += len(model["pivots"])
+    else:
+        n += sum(pivot <= high["above"] for pivot in model["pivots"])
+        n += len(HIGH_COLUMN_PRIORS[high["form"]])
+    n += sum(isinstance(value, Mapping) for value in model["doppler"].values())
+    free = [block.get(kind) for block in blocks["nuisances"].values() for kind in FREE_NUISANCES]
+    return n + sum(prior is not None for prior in free)
 
 
 def _derive_faults(derive: Mapping[str, Any]) -> Iterator[PlacedFault]:
@@ -120,22 +162,30 @@ def distribution_faults(study: Study, name: str) -> Iterator[PlacedFault]:
     tuple
         Place within the blocks, and fault.
     """
-    from fogline.distributions import frozen
-    from fogline.doppler import doppler_average
+    from fogline.distributions import frozen, positive
 
-    model = study.analyses[name].model
+    analysis = study.analyses[name]
+    model = analysis.model
     priors = model.evolution.priors
     # One distribution for all pivots is one fault, not one for each of them.
     same = all(prior == priors[0] for prior in priors)
     evolution = [((), priors[0])] if same else [((i,), prior) for i, prior in enumerate(priors)]
     checks: list[tuple[Place, Callable[[Any], Any], Any]] = [
-        (("model", "doppler"), doppler_average, model.doppler),
+        (("model", "doppler"), _doppler, model.doppler),
         (("model", "prior", "anchor"), frozen, model.prior.anchor),
-        (("model", "prior", "slope", "first"), _positive, model.prior.first_slope),
+        (("model", "prior", "slope", "first"), positive, model.prior.first_slope),
         *((("model", "evolution", "prior", *i), frozen, prior) for i, prior in evolution),
     ]
     if model.prior.slope_step is not None:
         checks.append((("model", "prior", "slope", "step"), frozen, model.prior.slope_step))
+    if model.high_column is not None:
+        names = HIGH_COLUMN_PRIORS[model.high_column.form]
+        for key, prior in zip(names, model.high_column.priors, strict=True):
+            checks.append((("model", "high_column", "prior", key), frozen, prior))
+    for dataset, block in analysis.nuisances.items():
+        for kind in FREE_NUISANCES:
+            if block.get(kind) is not None:
+                checks.append((("nuisances", dataset, kind), positive, block[kind]))
     for place, check, spec in checks:
         try:
             check(spec)
@@ -143,8 +193,8 @@ def distribution_faults(study: Study, name: str) -> Iterator[PlacedFault]:
             yield place, f"{dotted(place)}: {' '.join(str(error).split())}"
 
 
-def _positive(spec: Mapping[str, Any]) -> None:
-    from fogline.distributions import frozen
+def _doppler(settings: Mapping[str, Any]) -> None:
+    from fogline.doppler import doppler_average, doppler_grid
 
-    if not frozen(spec).sf(0.0) > 0.0:
-        raise ValueError("distribution of a slope must reach positive values")
+    grid = doppler_grid(settings)
+    doppler_average(settings if grid is None else grid.settings[0])

@@ -10,10 +10,25 @@ from fogline.settings import (
     CosmologySettings,
     DeriveSettings,
     EvolutionSettings,
+    HighColumnSettings,
     ModelSettings,
     SamplerSettings,
     SplinePriorSettings,
 )
+
+HIGH_COLUMN_PRIORS: Final[Mapping[str, Mapping[str, Any]]] = {
+    "gamma": {
+        "slope": {"dist": "norm", "loc": 1.5, "scale": 0.5},
+        "log_nc": {"dist": "norm", "loc": 21.3, "scale": 0.5},
+    },
+    "double_power_law": {
+        "slope": {"dist": "norm", "loc": 2.0, "scale": 0.5},
+        "steep": {"dist": "norm", "loc": 3.5, "scale": 1.0},
+        "log_nb": {"dist": "norm", "loc": 21.5, "scale": 0.3},
+    },
+    "discs": {"log_n0": {"dist": "norm", "loc": 21.3, "scale": 0.5}},
+}
+"""Parameters of every form of high columns, in order, and their default priors."""
 
 _ANCHOR_NEAR: Final = 20.3  # where the DLA counts of most studies begin and f is known best
 
@@ -58,6 +73,7 @@ def analysis_settings(
             column_redshifts=redshift_grid(derive["column_redshifts"]),
             draws=int(derive["draws"]),
         ),
+        nuisances=blocks["nuisances"],
     )
 
 
@@ -71,10 +87,17 @@ def _model(model: Mapping[str, Any]) -> ModelSettings:
     at = anchor.get("log_nhi")
     at = min(pivots, key=lambda pivot: abs(pivot - _ANCHOR_NEAR)) if at is None else float(at)
     walk = slope["kind"] == "walk"
+    high = _high_column(model["high_column"], pivots[-1])
+    if high is not None:
+        pivots = tuple(pivot for pivot in pivots if pivot <= float(model["high_column"]["above"]))
     return ModelSettings(
         reference_redshift=float(model["reference_redshift"]),
         pivots=pivots,
-        evolution=EvolutionSettings(tuple(map(float, evolution["pivots"])), tuple(priors)),
+        evolution=EvolutionSettings(
+            tuple(map(float, evolution["pivots"])),
+            tuple(priors),
+            tuple(map(float, evolution["breaks"])),
+        ),
         prior=SplinePriorSettings(
             anchor_log_nhi=at,
             anchor={key: item for key, item in anchor.items() if key != "log_nhi"},
@@ -83,7 +106,16 @@ def _model(model: Mapping[str, Any]) -> ModelSettings:
             slope_step=slope["step"] if walk else None,
         ),
         doppler=model["doppler"],
+        high_column=high,
     )
+
+
+def _high_column(block: Mapping[str, Any] | None, top: float) -> HighColumnSettings | None:
+    if block is None:
+        return None
+    form = block["form"]
+    priors = {**HIGH_COLUMN_PRIORS[form], **block["prior"]}
+    return HighColumnSettings(form, top, tuple(priors.values()))
 
 
 def redshift_grid(grid: Mapping[str, float] | Sequence[float]) -> tuple[float, ...]:

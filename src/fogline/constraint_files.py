@@ -14,7 +14,11 @@ from collections.abc import Iterable
 from pathlib import Path
 from typing import Any, Final
 
+import numpy as np
+from numpy.typing import NDArray
+
 from fogline.cosmology import Cosmology
+from fogline.covariance_files import linked_path, read_covariance
 from fogline.datasets import DataSet
 from fogline.ecsv_lines import RawTable, read_table, split_ecsv
 from fogline.faults import Fault, InputError
@@ -139,6 +143,7 @@ def _validate(raw: RawTable, faults: list[Fault]) -> DataSet | None:
     if table is None:
         return None
     arrays = check_rows(Rows(raw, table, faults), spec, value, counts, meta)
+    covariance, linked = _covariance(raw, meta, unit, arrays, faults)
     if faults:
         return None
     return DataSet(
@@ -149,8 +154,33 @@ def _validate(raw: RawTable, faults: list[Fault]) -> DataSet | None:
         unit=unit,
         counts=counts,
         cosmology=_cosmology(raw.meta.get("cosmology")),
+        logarithmic=value is not None and value.logarithmic and not counts,
+        covariance=covariance,
+        linked=linked,
         **arrays,
     )
+
+
+def _covariance(
+    raw: RawTable, meta: dict[str, Any], unit: str, arrays: dict[str, Any], faults: list[Fault]
+) -> tuple[NDArray[np.float64] | None, tuple[str, ...]]:
+    """Return the covariance that a file names, and the files that it came from."""
+    if meta.get("covariance") is None or faults:
+        return None, ()
+    line = raw.meta_line("covariance")
+    if (arrays["limit"] != 0).any():
+        what = "a limit stands in a file with a covariance; put limits into a file of their own"
+        faults.append(Fault(raw.path, arrays["lines"][int((arrays["limit"] != 0).argmax())], what))
+    if not np.array_equal(arrays["err_lo"], arrays["err_hi"]):
+        what = "covariance stands beside errors that differ between the sides; must be equal"
+        faults.append(Fault(raw.path, line, what))
+    path = linked_path(raw.path, meta["covariance"])
+    if not Path(path).is_file():
+        what = f"covariance names {meta['covariance']!r}, but there is no file {path}"
+        faults.append(Fault(raw.path, line, what))
+    if faults:
+        return None, ()
+    return read_covariance(path, unit, arrays, faults), (path,)
 
 
 def _value_column(spec: FileSpec, meta: dict[str, Any]) -> ValueColumn | None:

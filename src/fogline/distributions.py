@@ -48,6 +48,25 @@ def frozen(spec: Mapping[str, Any]) -> Any:
     return distribution
 
 
+def positive(spec: Mapping[str, Any]) -> Any:
+    """Return the scipy distribution that a config names, if it reaches positive values.
+
+    Parameters
+    ----------
+    spec : mapping
+        As `frozen` takes it.
+
+    Raises
+    ------
+    ValueError
+        As `frozen` does, or where it does not.
+    """
+    distribution = frozen(spec)
+    if not distribution.sf(0.0) > 0.0:
+        raise ValueError(f"distribution must reach positive values, not so {dict(spec)}")
+    return distribution
+
+
 def continuous_names() -> list[str]:
     """Return the names of all continuous distributions of `scipy.stats`, sorted."""
     return sorted(name for name, _ in inspect.getmembers(stats, _is_continuous))

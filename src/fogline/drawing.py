@@ -15,7 +15,6 @@ from fogline.combining import replicate_rng
 from fogline.comparison import compare
 from fogline.figures import FIGURES, FigureInputs, draw_comparison, save
 from fogline.posterior_file import read_draws
-from fogline.priors import Prior
 from fogline.response_file import Fit
 from fogline.tables import read_table, write_table
 
@@ -59,7 +58,7 @@ def draw_figures(
 
 def prior_draws(fit: Fit) -> Array:
     """Return draws from the prior, shape (`PRIOR_DRAWS`, n_parameters)."""
-    prior = Prior(fit.analysis.model)
+    prior = fit.prior
     return prior.to_parameters(replicate_rng(fit).standard_normal((PRIOR_DRAWS, prior.n_dim)))
 
 

@@ -2,14 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from typing import Any
+from collections.abc import Mapping, Sequence
+from typing import Any, Final
 
 from fogline.cosmology_keys import cosmology_faults, is_number, text_number_hint
+from fogline.distributions import positive
 from fogline.ecsv_lines import RawTable
 from fogline.faults import Fault, nearest
 from fogline.quantities import FILE_SPECS
 from fogline.quantities.spec import COMMON_META, FileSpec, MetaKey
+
+NOT_FOR_COUNTS: Final = ("likelihood", "covariance", "student_dof", "scatter")
+"""Meta keys that say something of errors, which counts do not have."""
 
 
 def find_spec(raw: RawTable, faults: list[Fault]) -> FileSpec | None:
@@ -70,6 +74,8 @@ def check_meta(raw: RawTable, spec: FileSpec, counts: bool, faults: list[Fault])
     check.column_order(meta)
     check.cosmology(meta)
     meta["likelihood"] = check.likelihood(meta, counts)
+    if counts:
+        check.none_of(NOT_FOR_COUNTS, "has no effect on counts, which are Poisson")
     return meta
 
 
@@ -109,6 +115,9 @@ class _MetaCheck:
             return None
         if not _good(key, found):
             hint = self._hint(key, found)
+            if key.kind == "distribution" and isinstance(found, Mapping):
+                self.fault(f"{key.name}: {_distribution_fault(found)}", key.name)
+                return key.default
             self.fault(f"{key.name} is {found!r}, must be {key.allowed}{hint}", key.name)
             return key.default
         return float(found) if key.kind == "number" else found
@@ -152,11 +161,14 @@ class _MetaCheck:
                 "cosmology",
             )
 
+    def none_of(self, names: Sequence[str], why: str) -> None:
+        for name in names:
+            if self.found.get(name) is not None:
+                self.fault(f"{name} {why}", name)
+
     def likelihood(self, meta: Mapping[str, Any], counts: bool) -> str:
         found = str(meta["likelihood"])
         if counts:
-            if self.found.get("likelihood") is not None:
-                self.fault("likelihood has no effect on counts, which are Poisson", "likelihood")
             return "poisson"
         if found == "lognormal" and any(v.logarithmic for v in self.spec.values.values()):
             self.fault("likelihood is 'lognormal', but the errors are in dex already", "likelihood")
@@ -167,9 +179,20 @@ def _all_match(when: Mapping[str, tuple[str, ...]], meta: Mapping[str, Any]) -> 
     return all(meta.get(name) in allowed for name, allowed in when.items())
 
 
+def _distribution_fault(spec: Mapping[str, Any]) -> str:
+    """Return what is wrong with a distribution of positive values; empty where nothing is."""
+    try:
+        positive(spec)
+    except ValueError as error:
+        return " ".join(str(error).split())
+    return ""
+
+
 def _good(key: MetaKey, found: Any) -> bool:
     if key.kind == "choice":
         return isinstance(found, str) and found in key.choices
+    if key.kind == "distribution":
+        return isinstance(found, Mapping) and not _distribution_fault(found)
     if key.kind == "text":
         return isinstance(found, str) and bool(found.strip())
     return is_number(found) and key.allows(float(found))

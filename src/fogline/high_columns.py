@@ -30,8 +30,6 @@ from typing import ClassVar, Final, Protocol
 import numpy as np
 from numpy.typing import NDArray
 
-from fogline.settings import Distribution
-
 Array = NDArray[np.float64]
 
 LN10: Final = float(np.log(10.0))
@@ -43,11 +41,6 @@ class HighColumnForm(Protocol):
     @property
     def names(self) -> tuple[str, ...]:
         """Its parameters, in order."""
-        ...
-
-    @property
-    def defaults(self) -> tuple[Distribution, ...]:
-        """Their priors where the config states none."""
         ...
 
     @property
@@ -76,10 +69,6 @@ class GammaFunction:
     """Power law with an exponential cut-off."""
 
     names: ClassVar = ("slope", "log_nc")
-    defaults: ClassVar[tuple[Distribution, ...]] = (
-        {"dist": "norm", "loc": 1.5, "scale": 0.5},
-        {"dist": "norm", "loc": 21.3, "scale": 0.5},
-    )
     panel = 0.25
 
     def ln_shape(self, parameters: Array, log_nhi: Array, join: float) -> Array:
@@ -94,11 +83,6 @@ class DoublePowerLaw:
     """Two power laws that meet at a break."""
 
     names: ClassVar = ("slope", "steep", "log_nb")
-    defaults: ClassVar[tuple[Distribution, ...]] = (
-        {"dist": "norm", "loc": 2.0, "scale": 0.5},
-        {"dist": "norm", "loc": 3.5, "scale": 1.0},
-        {"dist": "norm", "loc": 21.5, "scale": 0.3},
-    )
     # The break lies anywhere within a panel: narrow ones bound what that costs.
     panel = 0.05
 
@@ -118,7 +102,6 @@ class InclinedDiscs:
     """Randomly inclined exponential discs."""
 
     names: ClassVar = ("log_n0",)
-    defaults: ClassVar[tuple[Distribution, ...]] = ({"dist": "norm", "loc": 21.3, "scale": 0.5},)
     panel = 0.15
 
     def ln_shape(self, parameters: Array, log_nhi: Array, join: float) -> Array:

@@ -2,11 +2,41 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from fogline.column_ranges import check_column_range
 from fogline.constraint_files import read_constraint_files
 from fogline.datasets import DataSet
-from fogline.faults import InputError
+from fogline.faults import Fault, InputError
+from fogline.file_meta import NOT_FOR_COUNTS
 from fogline.settings import AnalysisSettings
+
+
+def with_nuisances(datasets: list[DataSet], analysis: AnalysisSettings) -> list[DataSet]:
+    """Return data sets with the nuisance settings of an analysis laid over their own meta.
+
+    Parameters
+    ----------
+    datasets : list of DataSet
+    analysis : AnalysisSettings
+
+    Raises
+    ------
+    InputError
+        Where the config gives counts a scatter or a Student-t.
+    """
+    faults = [
+        Fault(data.path, 1, f"{key} in the config's nuisances has no effect on counts")
+        for data in datasets
+        for key in analysis.nuisances.get(data.name, {})
+        if data.counts and key in NOT_FOR_COUNTS
+    ]
+    if faults:
+        raise InputError(faults)
+    return [
+        replace(data, meta={**data.meta, **analysis.nuisances.get(data.name, {})})
+        for data in datasets
+    ]
 
 
 def read_inputs(analysis: AnalysisSettings) -> list[DataSet]:
@@ -25,9 +55,9 @@ def read_inputs(analysis: AnalysisSettings) -> list[DataSet]:
     InputError
         With every fault of every file, or where a file needs f beyond the pivots.
     """
-    datasets = read_constraint_files(analysis.datasets)
-    pivots = analysis.model.pivots
-    faults = [fault for dataset in datasets for fault in check_column_range(dataset, pivots)]
+    datasets = with_nuisances(read_constraint_files(analysis.datasets), analysis)
+    columns = analysis.model.column_range
+    faults = [fault for dataset in datasets for fault in check_column_range(dataset, columns)]
     if faults:
         raise InputError(faults)
     return datasets

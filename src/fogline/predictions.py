@@ -25,7 +25,7 @@ def predict_table(analysis: AnalysisSettings, datasets: list[DataSet], point: Ar
     analysis : AnalysisSettings
     datasets : list of DataSet
     point : ndarray, shape (n_parameters,)
-        log10 f at the pivots at the reference redshift, then the exponents.
+        All parameters, those of the data sets' nuisances last.
 
     Returns
     -------
@@ -34,7 +34,9 @@ def predict_table(analysis: AnalysisSettings, datasets: list[DataSet], point: Ar
     """
     fit = build_fit(analysis, datasets)
     table = row_table(fit.response.datasets)
-    table["predicted"] = fit.response.predict(point)
+    predicted = fit.response.predict(point[None])
+    nuisances = point[None, fit.response.n_parameters :]
+    table["predicted"] = fit.posterior.likelihood.scaled(predicted, nuisances)[0]
     table.meta["ln_likelihood"] = float(fit.posterior.ln_likelihood(point[None])[0])
     table.meta.update(fit.table_meta())
     return table

@@ -69,6 +69,11 @@ class ModelSettings:
     doppler: Mapping[str, Any]
     high_column: HighColumnSettings | None = None
 
+    @property
+    def column_range(self) -> tuple[float, float]:
+        """Lowest and highest column at which f is defined [dex of cm^-2]."""
+        return self.pivots[0], self.high_column.top if self.high_column else self.pivots[-1]
+
 
 @dataclass(frozen=True)
 class SamplerSettings:

@@ -119,7 +119,7 @@ def _meta_key(spec: FileSpec, key: MetaKey) -> Iterator[str]:
 
 def _range(key: MetaKey) -> str:
     told = key.kind == "choice" and all(choice in key.help for choice in key.choices)
-    return "" if told or key.kind == "text" else key.allowed
+    return "" if told or key.kind in ("text", "distribution") else key.allowed
 
 
 def _group_note(spec: FileSpec, key: MetaKey) -> str:
@@ -133,6 +133,8 @@ def _group_note(spec: FileSpec, key: MetaKey) -> str:
 def _scalar(value: object) -> str:
     if isinstance(value, float):
         return float_text(value)
+    if isinstance(value, dict):
+        return "{" + ", ".join(f"{key}: {_scalar(item)}" for key, item in value.items()) + "}"
     return "..." if value is None else str(value)
 
 

@@ -226,7 +226,7 @@ def model(study):
 
 def test_point_is_read(model):
     point = read_point("point.yaml", model)
-    np.testing.assert_array_equal(point, [-11.0, -13.7, -18.6, -21.7, -26.0, 2.0, 1.5])
+    np.testing.assert_array_equal(point.theta, [-11.0, -13.7, -18.6, -21.7, -26.0, 2.0, 1.5])
 
 
 @pytest.mark.parametrize(

@@ -91,9 +91,9 @@ def _analysis_faults(analysis: AnalysisSettings, datasets: dict[str, DataSet]) -
     from fogline.column_ranges import check_column_range
     from fogline.constraint_files import duplicate_stems
 
-    pivots = analysis.model.pivots
+    columns = analysis.model.column_range
     read = [datasets[path] for path in analysis.datasets if path in datasets]
-    beyond = [fault for dataset in read for fault in check_column_range(dataset, pivots)]
+    beyond = [fault for dataset in read for fault in check_column_range(dataset, columns)]
     return [*duplicate_stems(analysis.datasets), *beyond]
 
 
@@ -103,7 +103,7 @@ def _extra_faults(datasets: Iterable[DataSet], analyses: Sequence[AnalysisSettin
 
     faults = []
     for dataset in datasets:
-        found = [check_column_range(dataset, analysis.model.pivots) for analysis in analyses]
+        found = [check_column_range(dataset, analysis.model.column_range) for analysis in analyses]
         if all(found):
             faults.extend(found[0])
     return faults

@@ -24,4 +24,4 @@ def run(options: argparse.Namespace) -> None:
 
     from fogline.predictions import write_derived_at
 
-    write_derived_at(analysis, point, options.output)
+    write_derived_at(analysis, point.theta, options.output)

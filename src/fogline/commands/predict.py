@@ -28,10 +28,13 @@ def run(options: argparse.Namespace) -> None:
     analysis, point = select(options)
 
     from fogline.inputs import read_inputs
+    from fogline.nuisances import nuisances_of
     from fogline.predictions import predict_table
     from fogline.tables import write_table
 
-    table = predict_table(analysis, read_inputs(analysis), point)
+    datasets = read_inputs(analysis)
+    theta = point.with_nuisances(nuisances_of(datasets))
+    table = predict_table(analysis, datasets, theta)
     if options.output is None:
         table.write(sys.stdout, format="ascii.ecsv")
     else:

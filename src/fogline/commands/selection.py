@@ -8,9 +8,7 @@ from typing import TYPE_CHECKING
 from fogline.faults import Fault, InputError, nearest
 
 if TYPE_CHECKING:
-    import numpy as np
-    from numpy.typing import NDArray
-
+    from fogline.points import Point
     from fogline.settings import AnalysisSettings
 
 DEFAULT_CONFIG = "config/config.yaml"
@@ -35,7 +33,7 @@ def add_selection(parser: argparse.ArgumentParser) -> None:
     )
 
 
-def select(options: argparse.Namespace) -> tuple[AnalysisSettings, NDArray[np.float64]]:
+def select(options: argparse.Namespace) -> tuple[AnalysisSettings, Point]:
     """Return the analysis and the point that the options choose.
 
     Parameters
@@ -46,7 +44,7 @@ def select(options: argparse.Namespace) -> tuple[AnalysisSettings, NDArray[np.fl
     Returns
     -------
     analysis : AnalysisSettings
-    point : ndarray, shape (n_parameters,)
+    point : Point
 
     Raises
     ------

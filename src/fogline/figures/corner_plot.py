@@ -67,10 +67,20 @@ def draw(inputs: FigureInputs) -> Figure:
 
 
 def short_labels(inputs: FigureInputs) -> list[str]:
-    """Return log f and gamma with their columns as subscripts."""
+    """Return log f and gamma with their columns as subscripts, and the names of the others."""
     distribution = inputs.fit.setting.distribution
-    pivots = [rf"$\log f_{{{pivot:g}}}$" for pivot in distribution.pivots]
-    return pivots + [rf"$\gamma_{{{pivot:g}}}$" for pivot in distribution.evolution_pivots]
+    labels = [rf"$\log f_{{{pivot:g}}}$" for pivot in distribution.pivots]
+    for segment in distribution.segments:
+        below = f", {segment}" if segment else ""
+        labels += [rf"$\gamma_{{{pivot:g}{below}}}$" for pivot in distribution.evolution_pivots]
+    others = inputs.fit.prior.names[len(labels) :]
+    return labels + [_broken(name) for name in others]
+
+
+def _broken(name: str) -> str:
+    """Return a name such as scale[my_data] in two lines."""
+    kind, _, of = name.rstrip("]").partition("[")
+    return f"{kind.replace('_', ' ')}\n{of.replace('_', ' ')}"
 
 
 def _tidy(figure: Figure) -> None:

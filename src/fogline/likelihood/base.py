@@ -109,5 +109,5 @@ def _rows(data: DataSet) -> RowData:
     if limited.any():
         # The measurement behind the limit: L − z_C σ (upper), L + z_C σ (lower).
         observed = observed - data.limit * quantile * np.where(limited, hi, 0.0)
-    dof = np.full(data.n_rows, float(data.meta.get("student_dof", np.inf)))
+    dof = np.full(data.n_rows, float(data.meta.get("student_dof") or np.inf))
     return RowData(observed, lo, hi, log_normal, poisson, data.limit, dof)

@@ -19,7 +19,7 @@ class MetaKey:
     ----------
     name : str
         The key.
-    kind : {"choice", "number", "text"}
+    kind : {"choice", "number", "text", "distribution"}
         What its value is.
     help : str
         One line for templates and error messages.
@@ -41,7 +41,7 @@ class MetaKey:
     """
 
     name: str
-    kind: Literal["choice", "number", "text"]
+    kind: Literal["choice", "number", "text", "distribution"]
     help: str
     choices: tuple[str, ...] = ()
     minimum: float = float("-inf")
@@ -63,6 +63,8 @@ class MetaKey:
         """The allowed values in words, for messages and templates."""
         if self.kind == "choice":
             return " | ".join(self.choices)
+        if self.kind == "distribution":
+            return "a distribution such as {dist: norm, loc: 1.0, scale: 0.05}"
         return (
             "text" if self.kind == "text" else interval(self.minimum, self.maximum, self.exclusive)
         )
@@ -103,6 +105,36 @@ COMMON_META: Final = (
         choices=("split_normal", "lognormal"),
         required=False,
         default="split_normal",
+    ),
+    MetaKey(
+        "covariance",
+        "text",
+        "file, beside this one, with the covariance or correlation of the rows' errors",
+        required=False,
+        example="covariance.ecsv",
+    ),
+    MetaKey(
+        "student_dof",
+        "number",
+        "degrees of freedom of Student-t in place of normal errors, against outliers",
+        minimum=1.0,
+        maximum=1000.0,
+        required=False,
+        example=4,
+    ),
+    MetaKey(
+        "scale",
+        "distribution",
+        "prior of a factor on the predictions, for an uncertain calibration",
+        required=False,
+        example={"dist": "norm", "loc": 1.0, "scale": 0.05},
+    ),
+    MetaKey(
+        "scatter",
+        "distribution",
+        "prior of an extra scatter added to the errors in quadrature, in their unit",
+        required=False,
+        example={"dist": "halfnorm", "scale": 0.1},
     ),
 )
 """Meta keys of every constraint file (``cosmology`` is treated apart)."""
