@@ -39,7 +39,7 @@ Array = NDArray[np.float64]
 TAIL: Final = 1e-5
 """Probability of the prior of a free argument that each end of its grid leaves out."""
 
-N_GRID: Final = 8
+N_GRID: Final = 12
 """Nodes of a free argument."""
 
 _B_FLOOR: Final = 1e-6  # [km/s] far below any line's width; keeps b = 0 out of a division

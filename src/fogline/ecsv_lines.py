@@ -129,7 +129,8 @@ def read_table(raw: RawTable, faults: list[Fault]) -> Table | None:
     astropy.table.Table or None
         None where there is nothing to read.
     """
-    if not raw.rows or "__serialized_columns__" in raw.meta:  # which would make other columns
+    # Serialized columns would make others than those that stand there.
+    if not raw.rows or "__serialized_columns__" in (raw.meta or {}):
         return None
     lines = [*raw.head, *(row.text for row in raw.rows)]
     try:

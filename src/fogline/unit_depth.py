@@ -10,6 +10,10 @@ the first crossing of s q(s) = 1 is solved for all walkers and sources at once; 
 τ need not be monotone in s (the cross-section falls along the path). Where there is none above
 redshift 0 the answer is infinite: beyond reach.
 
+Where the exponents of f change at a break in redshift, τ has a kink in its curvature there: the
+path is cut at breaks, and each segment has coefficients and a table of its own (of τ itself in all
+but the first, where 1/s would spoil the convergence).
+
 f between its redshift nodes is interpolated in ln(1+z) (Chebyshev, `Z_NODES` nodes from 0 to the
 highest source). Accuracy against adaptive quadrature: ``tests/properties/test_accuracy.py``.
 """
@@ -162,39 +166,97 @@ def continuum_weights(
 
 
 def depth_coefficients(
-    z_em: float, grid: Array, distribution: ColumnDistribution, cosmology: Cosmology
+    z_em: float,
+    grid: Array,
+    distribution: ColumnDistribution,
+    cosmology: Cosmology,
+    n_segments: int = 1,
 ) -> tuple[Array, Array]:
-    """Return the weights that give the Chebyshev coefficients of q(s) = τ/s of one source.
+    """Return the weights that give the Chebyshev coefficients of τ/s, in later segments of τ.
 
     Parameters
     ----------
     z_em : float
     grid, distribution, cosmology
         As in `continuum_weights`.
+    n_segments : int
+        Segments of the path, cut at breaks of the distribution; those that this source has not are
+        given zero weights.
 
     Returns
     -------
     log_nhi : ndarray, shape (n_columns,) [dex of cm^-2]
-    weights : ndarray, shape (COEFFICIENTS, n_z, n_columns)
+    weights : ndarray, shape (n_segments * COEFFICIENTS, n_z, n_columns)
     """
-    s = chebyshev_points(0.0, float(np.log1p(z_em)), COEFFICIENTS)
-    rows = []
-    for step in s:
-        z_near = float(np.expm1(np.log1p(z_em) - step))
-        log_nhi, weights = continuum_weights(z_near, z_em, grid, distribution, cosmology)
-        rows.append(weights / step)
-    to_coefficients = np.linalg.inv(chebyshev.chebvander(chebyshev.chebpts1(len(s)), len(s) - 1))
-    return log_nhi, np.tensordot(to_coefficients, np.array(rows), axes=1)
+    edges = segment_edges(z_em, distribution.breaks, n_segments)
+    to_coefficients = np.linalg.inv(
+        chebyshev.chebvander(chebyshev.chebpts1(COEFFICIENTS), COEFFICIENTS - 1)
+    )
+    log_nhi, _ = column_nodes(*distribution.column_range, distribution.kinks)
+    weights = np.zeros((n_segments, COEFFICIENTS, len(grid), len(log_nhi)))
+    for i, (near, far) in enumerate(pairwise(np.log1p(z_em) * edges**2)):
+        if near == far:
+            continue
+        rows = []
+        for step in chebyshev_points(near, far, COEFFICIENTS):
+            z_near = float(np.expm1(np.log1p(z_em) - step))
+            row = continuum_weights(z_near, z_em, grid, distribution, cosmology)[1]
+            rows.append(row if i else row / step)
+        weights[i] = np.tensordot(to_coefficients, np.array(rows), axes=1)
+    return log_nhi, weights.reshape(-1, len(grid), len(log_nhi))
 
 
-def solve_unit_depth(coefficients: Array, z_em: ArrayLike) -> Array:
+def segment_edges(z_em: float, breaks: Sequence[float], n_segments: int) -> Array:
+    """Return where a source's path is cut, as v = √(s / s_max), shape (n_segments + 1,).
+
+    Parameters
+    ----------
+    z_em : float
+    breaks : sequence of float
+        Redshifts; those beyond the source cut nothing, and segments that are left over are empty.
+    n_segments : int
+    """
+    inner = sorted(np.log((1.0 + z_em) / (1.0 + b)) for b in _inside(breaks, 0.0, z_em))
+    edges = np.ones(n_segments + 1)
+    edges[: len(inner) + 1] = np.sqrt([0.0, *inner] / np.log1p(z_em))
+    return edges
+
+
+def table_basis(z_em: Array, edges: Array) -> Array:
+    """Return what turns Chebyshev coefficients into tables of q = τ/s, one a segment.
+
+    Parameters
+    ----------
+    z_em : ndarray, shape (n_sources,)
+    edges : ndarray, shape (n_sources, n_segments + 1)
+        From `segment_edges`.
+
+    Returns
+    -------
+    ndarray, shape (n_sources, n_segments, COEFFICIENTS, _TABLE_SIZE + 1)
+    """
+    lo, hi = edges[..., :-1, None], edges[..., 1:, None]
+    v = lo + (hi - lo) * _TABLE_STEP
+    span = np.where(hi > lo, hi**2 - lo**2, 1.0)
+    x = 2.0 * (v**2 - lo**2) / span - 1.0
+    basis = np.asarray(chebyshev.chebvander(x, COEFFICIENTS - 1), dtype=float)
+    s = np.log1p(z_em)[:, None, None] * v**2
+    basis[:, 1:] /= s[:, 1:, :, None]
+    return np.moveaxis(basis, -1, -2)
+
+
+def solve_unit_depth(
+    coefficients: Array, z_em: ArrayLike, edges: Array | None = None, basis: Array | None = None
+) -> Array:
     """Return s at the first τ(s) = 1, infinite where τ stays below one down to redshift 0.
 
     Parameters
     ----------
-    coefficients : ndarray, shape (..., n_sources, COEFFICIENTS)
-        Chebyshev coefficients of τ/s on 0 < s < ln(1+z_em).
+    coefficients : ndarray, shape (..., n_sources, n_segments * COEFFICIENTS)
+        Chebyshev coefficients of τ/s on 0 < s < ln(1+z_em), or on each segment of it.
     z_em : array_like, shape (n_sources,)
+    edges, basis : ndarray, optional
+        `segment_edges` and `table_basis` of all sources; a single segment by default.
 
     Returns
     -------
@@ -202,10 +264,33 @@ def solve_unit_depth(coefficients: Array, z_em: ArrayLike) -> Array:
         ln[(1+z_em)/(1+z_912)].
     """
     s_max = np.log1p(np.asarray(z_em, dtype=float))
-    flat = coefficients.reshape(-1, COEFFICIENTS) @ _TABLE_BASIS
-    q = flat.reshape(*coefficients.shape[:-1], _TABLE_SIZE + 1)
+    if edges is None or basis is None:
+        flat = coefficients.reshape(-1, COEFFICIENTS) @ _TABLE_BASIS
+        q = flat.reshape(*coefficients.shape[:-1], _TABLE_SIZE + 1)
+        return _solve_segment(q, s_max, np.zeros_like(s_max), np.ones_like(s_max))
+    by_segment = coefficients.reshape(*coefficients.shape[:-1], -1, COEFFICIENTS)
+    first = np.full(coefficients.shape[:-1], np.inf)
+    for i in range(edges.shape[-1] - 1):
+        q = np.einsum("...sc,sct->...st", by_segment[..., i, :], basis[:, i])
+        found = _solve_segment(q, s_max, edges[:, i], edges[:, i + 1])
+        first = np.minimum(first, found)
+    return first
+
+
+def _solve_segment(q: Array, s_max: Array, v_lo: Array, v_hi: Array) -> Array:
+    """Return s at the first τ(s) = 1 within a segment, infinite where there is none.
+
+    Parameters
+    ----------
+    q : ndarray, shape (..., n_sources, _TABLE_SIZE + 1)
+        τ/s evenly in v = √(s / s_max) over the segment.
+    s_max, v_lo, v_hi : ndarray, shape (n_sources,)
+    """
+    # An empty segment reaches nothing, and must not divide by its width either.
+    step_v = np.where(v_hi > v_lo, v_hi - v_lo, 1.0) / _TABLE_SIZE
+    v_table = v_lo[:, None] + (v_hi - v_lo)[:, None] * _TABLE_STEP
     with np.errstate(divide="ignore"):
-        enough = 1.0 / (s_max[..., None] * _TABLE_STEP**2)
+        enough = 1.0 / (s_max[:, None] * v_table**2)
     reached = q >= enough
     first = np.argmax(reached, axis=-1)
     start = np.clip(first - 2, 0, _TABLE_SIZE - 3)
@@ -216,11 +301,11 @@ def solve_unit_depth(coefficients: Array, z_em: ArrayLike) -> Array:
     for _ in range(NEWTON_STEPS):
         value, slope = _evaluate(cubic, t)
         value = np.maximum(value, np.finfo(float).tiny)
-        v = (start + t) / _TABLE_SIZE
+        v = v_lo + step_v * (start + t)
         root = np.sqrt(s_max * value)
-        step = (v * root - 1.0) / (root * (1.0 / _TABLE_SIZE + 0.5 * v * slope / value))
+        step = (v * root - 1.0) / (root * (step_v + 0.5 * v * slope / value))
         t = np.clip(t - step, last - 1.0, last)
-    s = s_max * ((start + t) / _TABLE_SIZE) ** 2
+    s = s_max * (v_lo + step_v * (start + t)) ** 2
     return np.where(reached.any(axis=-1), s, np.inf)
 
 

@@ -193,3 +193,103 @@ def test_replicated_counts_are_poisson():
     assert drawn.mean() == pytest.approx(3.3, abs=0.06)
     assert drawn.var() == pytest.approx(3.3, abs=0.16)
     assert np.all(drawn == np.round(drawn))
+
+
+# Student-t, covariance, scatter, scale
+
+
+def test_student_rows_are_scipys_t():
+    data = data_set([1.0, 2.0, 3.0], [0.3] * 3, [0.3] * 3, student_dof=4)
+    expected = stats.t(4, [1.0, 2.0, 3.0], 0.3).logpdf(PREDICTED)
+    assert_allclose(rows(data), expected, rtol=1e-12)
+
+
+def test_student_limits_are_scipys_t():
+    data = data_set([2.0], [0.4], [0.4], limit=1, confidence=0.95, student_dof=3)
+    made = 2.0 - stats.norm.ppf(0.95) * 0.4
+    expected = stats.t(3, 2.6, 0.4).logcdf(made)
+    assert rows(data, [[2.6]])[0, 0] == pytest.approx(expected, rel=1e-10)
+
+
+COVARIANCE = np.array([[0.09, 0.03, 0.0], [0.03, 0.04, -0.02], [0.0, -0.02, 0.25]])
+
+
+def correlated(**meta):
+    sigma = np.sqrt(np.diag(COVARIANCE))
+    data = data_set([1.0, 2.0, 3.0], sigma, sigma, **meta)
+    return dataclasses.replace(data, covariance=COVARIANCE)
+
+
+def test_covariance_is_scipys_multivariate_normal():
+    expected = stats.multivariate_normal([1.0, 2.0, 3.0], COVARIANCE).logpdf(PREDICTED)
+    assert_allclose(rows(correlated()).sum(axis=1), expected, rtol=1e-12)
+    # The control: without its off-diagonal it is another number.
+    alone = stats.multivariate_normal([1.0, 2.0, 3.0], np.diag(np.diag(COVARIANCE)))
+    assert np.abs(alone.logpdf(PREDICTED) - expected).min() > 0.05
+
+
+def test_covariance_with_student_tails_is_scipys_multivariate_t():
+    expected = stats.multivariate_t([1.0, 2.0, 3.0], COVARIANCE, df=5).logpdf(PREDICTED)
+    assert_allclose(rows(correlated(student_dof=5)).sum(axis=1), expected, rtol=1e-12)
+
+
+def test_lognormal_covariance_is_that_of_the_logarithms():
+    data = correlated(likelihood="lognormal")
+    scale = np.array([1.0, 2.0, 3.0])
+    normal = stats.multivariate_normal(np.log(scale), COVARIANCE / np.outer(scale, scale))
+    expected = normal.logpdf(np.log(PREDICTED)) - np.log(scale).sum()
+    assert_allclose(rows(data).sum(axis=1), expected, rtol=1e-12)
+
+
+def test_scatter_is_added_in_quadrature():
+    prior = {"dist": "halfnorm", "scale": 0.5}
+    loose = np.array([[0.4], [0.0]])
+    for data, expected in (
+        (
+            data_set([1.0, 2.0, 3.0], [0.3] * 3, [0.3] * 3, scatter=prior),
+            stats.norm([1.0, 2.0, 3.0], 0.5).logpdf(PREDICTED[0]).sum(),
+        ),
+        (
+            correlated(scatter=prior),
+            stats.multivariate_normal([1.0, 2.0, 3.0], COVARIANCE + 0.16 * np.eye(3)).logpdf(
+                PREDICTED[0]
+            ),
+        ),
+    ):
+        likelihood = Likelihood.from_datasets([data])
+        total = likelihood.ln_total(PREDICTED, loose)
+        assert total[0] == pytest.approx(expected, rel=1e-12)
+        assert total[1] == pytest.approx(likelihood.ln_total(PREDICTED)[1], rel=1e-12)
+
+
+def test_scatter_touches_its_own_data_set_alone():
+    one = data_set([1.0], [0.3], [0.3], scatter={"dist": "halfnorm", "scale": 0.5})
+    other = data_set([5.0], counts=True)
+    likelihood = Likelihood.from_datasets([other, one])
+    predicted = np.array([[4.0, 1.2]])
+    each = likelihood.ln_rows(predicted, np.array([[0.4]]))[0]
+    assert each[0] == pytest.approx(stats.poisson(4.0).logpmf(5), rel=1e-12)
+    assert each[1] == pytest.approx(stats.norm(1.0, 0.5).logpdf(1.2), rel=1e-12)
+
+
+def test_scale_multiplies_predictions_and_is_added_to_logarithms():
+    prior = {"dist": "norm", "loc": 1.0, "scale": 0.1}
+    linear = data_set([1.0], [0.3], [0.3], scale=prior)
+    dex = dataclasses.replace(data_set([-21.0], [0.1], [0.1], scale=prior), logarithmic=True)
+    counts = data_set([7.0], counts=True, scale=prior)
+    likelihood = Likelihood.from_datasets([linear, dex, counts])
+    predicted = np.array([[1.2, -21.1, 6.0]])
+    scaled = likelihood.scaled(predicted, np.array([[0.9, 1.25, 1.5]]))
+    assert_allclose(scaled, [[1.08, -21.1 + np.log10(1.25), 9.0]], rtol=1e-14)
+    each = likelihood.ln_rows(predicted, np.array([[0.9, 1.25, 1.5]]))[0]
+    assert each[2] == pytest.approx(stats.poisson(9.0).logpmf(7), rel=1e-12)
+    assert_allclose(predicted, [[1.2, -21.1, 6.0]])  # the caller's predictions are left alone
+
+
+def test_replicates_of_correlated_rows_have_their_covariance():
+    model = Likelihood.from_datasets([correlated()])
+    drawn = model.replicate(np.tile([1.0, 2.0, 3.0], (60_000, 1)), np.random.default_rng(4))
+    # Standard errors of a covariance are below 0.25 √(2/60000) = 0.0015.
+    assert_allclose(np.cov(drawn.T), COVARIANCE, atol=0.006)
+    whitened = model.standardize(drawn, np.array([[1.0, 2.0, 3.0]]).repeat(len(drawn), axis=0))
+    assert_allclose(np.cov(whitened.T), np.eye(3), atol=0.03)

@@ -28,12 +28,13 @@ from fogline.quadrature import column_nodes
 from fogline.quantities.base import Block, Setting, Term, assemble, bin_mean, row_redshifts
 from fogline.quantities.spec import FileSpec, MetaKey, ValueColumn
 from fogline.unit_depth import (
-    COEFFICIENTS,
     depth_coefficients,
     length_table,
     path_length,
     redshift_grid,
+    segment_edges,
     solve_unit_depth,
+    table_basis,
 )
 
 Array = NDArray[np.float64]
@@ -96,9 +97,9 @@ class MeanFreePath:
         if data.meta["definition"] == "local":
             lengths = constants["length"] / raw
         else:
-            z_em = constants["z_em"]
-            shape = (*raw.shape[:-1], len(z_em), COEFFICIENTS)
-            s = solve_unit_depth(raw.reshape(shape), z_em)
+            z_em, basis = constants["z_em"], constants.get("table_basis")
+            coefficients = raw.reshape(*raw.shape[:-1], len(z_em), -1)
+            s = solve_unit_depth(coefficients, z_em, constants.get("edges"), basis)
             lengths = path_length(s, z_em, constants["length"])
         return _weighted_mean(lengths, constants["mean"])
 
@@ -121,13 +122,15 @@ class MeanFreePath:
         cosmology = data.cosmology or setting.cosmology
         nodes = row_redshifts(data, setting)
         z_em = np.array([z for _, z, _ in nodes])
-        grid = redshift_grid(float(z_em.max()), setting.distribution.breaks)
+        breaks = setting.distribution.breaks
+        n_segments = 1 + sum(b < z_em.max() for b in breaks)
+        grid = redshift_grid(float(z_em.max()), breaks)
         weights = []
         for z in z_em:
             log_nhi, rows = depth_coefficients(
-                float(z), grid, setting.distribution, setting.cosmology
+                float(z), grid, setting.distribution, setting.cosmology, n_segments
             )
-            weights.append(rows.reshape(COEFFICIENTS, -1))
+            weights.append(rows.reshape(len(rows), -1))
         comoving = data.meta["frame"] == "comoving"
         length = [length_table(float(z), cosmology, comoving) for z in z_em]
         return Block(
@@ -138,8 +141,17 @@ class MeanFreePath:
                 "z_em": z_em,
                 "length": np.array(length) * length_unit(data.unit, cosmology),
                 "mean": bin_mean(nodes, data.n_rows),
+                **_segment_tables(z_em, breaks, n_segments),
             },
         )
+
+
+def _segment_tables(z_em: Array, breaks: tuple[float, ...], n_segments: int) -> dict[str, Array]:
+    """Return what solving needs of paths that breaks cut; nothing where there is one segment."""
+    if n_segments == 1:
+        return {}
+    edges = np.array([segment_edges(float(z), breaks, n_segments) for z in z_em])
+    return {"edges": edges, "table_basis": table_basis(z_em, edges)}
 
 
 def _weighted_mean(lengths: Array, mean: Array) -> Array:
