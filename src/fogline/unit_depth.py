@@ -273,7 +273,8 @@ def solve_unit_depth(
     for i in range(edges.shape[-1] - 1):
         q = np.einsum("...sc,sct->...st", by_segment[..., i, :], basis[:, i])
         found = _solve_segment(q, s_max, edges[:, i], edges[:, i + 1])
-        first = np.minimum(first, found)
+        # A later segment may begin above one: only the first that reaches it counts.
+        first = np.where(np.isinf(first), found, first)
     return first
 
 
