@@ -48,7 +48,8 @@ class Survey:
     """One constraint file before anybody observed anything.
 
     ``relative`` holds the errors of both sides over the value (in dex for log f); ``digits`` are
-    significant digits of the file; ``limits`` turns rows into limits: row → upper or lower.
+    significant digits of the file; ``limits`` turns rows into limits: row → upper or lower;
+    ``correlation`` is the length [Angstrom] over which errors are correlated.
     """
 
     name: str
@@ -63,6 +64,8 @@ class Survey:
     columns: tuple[list[float], list[float]] | None = None
     path: list[float] | None = None
     limits: dict[int, str] = field(default_factory=dict)
+    wavelengths: tuple[list[float], list[float]] | None = None
+    correlation: float | None = None
     decimals: int = 3
 
 
@@ -170,6 +173,37 @@ SURVEYS = (
         limits={3: "upper"},
         decimals=6,
     ),
+    Survey(
+        "lyb_opacity",
+        "lyman_series_opacity",
+        "Forest of Lyb, the Lya forest in front of it divided out.",
+        {
+            "line": "beta",
+            "foreground": "removed",
+            "form": "tau",
+            "log_nhi_min": 12.0,
+            "log_nhi_max": 17.2,
+        },
+        *single(2.8, 3.2, 3.7),
+        relative=(0.1, 0.1),
+        decimals=4,
+    ),
+    Survey(
+        "composite_flux",
+        "continuum_flux",
+        "Stack of quasars below the Lyman limit, over its flux just above it; continuum errors "
+        "are correlated.",
+        {
+            "lines": "included",
+            "reference_wavelength": 920.0,
+            "covariance": "covariance/composite_flux.ecsv",
+        },
+        *single(*[3.6] * 6),
+        relative=(0.06, 0.06),
+        wavelengths=(list(range(850, 910, 10)), list(range(860, 920, 10))),
+        correlation=15.0,
+        decimals=4,
+    ),
 )
 
 
@@ -180,9 +214,26 @@ def observe(survey: Survey, rng: np.random.Generator) -> Table:
     truth = response.predict(np.array(TRUTH["log_f"] + TRUTH["evolution"]))
     scale = np.ones_like(truth) if _in_dex(survey) else truth
     lo, hi = (relative * scale for relative in survey.relative)
-    likelihood = Likelihood.from_datasets([replace(expected, observed=truth, err_lo=lo, err_hi=hi)])
+    filled = replace(expected, observed=truth, err_lo=lo, err_hi=hi)
+    if survey.correlation is not None:
+        filled = replace(filled, covariance=_correlations(survey) * np.outer(lo, lo))
+    likelihood = Likelihood.from_datasets([filled])
     drawn = likelihood.replicate(truth[None], rng)[0]
     return _table(survey, drawn, np.round(lo, survey.decimals), np.round(hi, survey.decimals))
+
+
+def _correlations(survey: Survey) -> np.ndarray:
+    assert survey.wavelengths is not None
+    assert survey.correlation is not None
+    middle = np.mean(survey.wavelengths, axis=0)
+    return np.round(np.exp(-np.abs(middle[:, None] - middle) / survey.correlation), 4)
+
+
+def _correlation_table(survey: Survey) -> Table:
+    """Return the upper triangle of a survey's correlations."""
+    matrix = _correlations(survey)
+    row, column = np.triu_indices(len(matrix), 1)
+    return Table({"row": row, "column": column, "correlation": matrix[row, column]})
 
 
 def _in_dex(survey: Survey) -> bool:
@@ -196,6 +247,9 @@ def _blank(survey: Survey) -> DataSet:
         filled["cosmology"] = Cosmology(**survey.cosmology)
     if survey.columns is not None:
         filled["log_nhi_lo"], filled["log_nhi_hi"] = map(np.array, survey.columns)
+    if survey.wavelengths is not None:
+        lo, hi = (np.array(edge, dtype=float) for edge in survey.wavelengths)
+        filled |= {"wavelength_lo": lo, "wavelength_hi": hi}
     if survey.path is not None:
         filled |= {"search_path": np.array(survey.path), "counts": True}
     return replace(data, **filled)
@@ -209,6 +263,9 @@ def _table(survey: Survey, drawn: np.ndarray, lo: np.ndarray, hi: np.ndarray) ->
         table["z_lo"], table["z_hi"] = survey.z_lo, survey.z_hi
     if survey.columns is not None:
         table["log_nhi_lo"], table["log_nhi_hi"] = survey.columns
+    if survey.wavelengths is not None:
+        for name, edge in zip(("wavelength_lo", "wavelength_hi"), survey.wavelengths, strict=True):
+            table[name] = np.array(edge, dtype=float) * units.Angstrom
     if survey.path is not None:
         table["count"], table["path"] = drawn.astype(int), survey.path
     else:
@@ -252,11 +309,17 @@ def main(directory: str | Path = Path(__file__).parent) -> None:
     """Write every file of the demo."""
     streams = np.random.SeedSequence(SEED).spawn(len(SURVEYS))
     for survey, stream in zip(SURVEYS, streams, strict=True):
-        table = observe(survey, np.random.default_rng(stream))
-        write_whole(
-            Path(directory) / f"{survey.name}.ecsv",
-            lambda path, table=table: table.write(path, format="ascii.ecsv", overwrite=True),
-        )
+        write(observe(survey, np.random.default_rng(stream)), directory, f"{survey.name}.ecsv")
+        if survey.correlation is not None:
+            write(_correlation_table(survey), directory, survey.meta["covariance"])
+
+
+def write(table: Table, directory: str | Path, name: str) -> None:
+    """Write one file of the demo, whole or not at all."""
+    write_whole(
+        Path(directory) / name,
+        lambda path: table.write(path, format="ascii.ecsv", overwrite=True),
+    )
 
 
 if __name__ == "__main__":

@@ -18,7 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fogline.cosmology import Cosmology
-from fogline.covariance_files import linked_path, read_covariance
+from fogline.covariance_files import read_covariance
 from fogline.datasets import DataSet
 from fogline.ecsv_lines import RawTable, read_table, split_ecsv
 from fogline.faults import Fault, InputError
@@ -26,6 +26,7 @@ from fogline.file_columns import are_counts, check_columns
 from fogline.file_meta import check_meta, find_spec
 from fogline.file_rows import Rows, check_rows
 from fogline.file_units import check_units
+from fogline.linked_files import linked_path
 from fogline.quantities.spec import FileSpec, ValueColumn
 from fogline.text_files import read_text
 

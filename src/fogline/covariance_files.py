@@ -9,7 +9,6 @@ with the errors in the constraint file to `TOLERANCE`, which finds wrong units a
 
 from __future__ import annotations
 
-from pathlib import Path
 from typing import Any, Final
 
 import numpy as np
@@ -161,8 +160,3 @@ def _check_matrix(matrix: Array, raw: RawTable, errors: Array, faults: list[Faul
             " must be positive"
         )
         faults.append(Fault(raw.path, raw.names_line, what))
-
-
-def linked_path(constraint_file: str, name: str) -> str:
-    """Return the path of a file that a constraint file names, relative to its own folder."""
-    return str(Path(constraint_file).parent / name)

@@ -54,6 +54,8 @@ class DataSet:
         Whether `observed` and errors are in dex.
     covariance : ndarray, shape (n_rows, n_rows) [unit squared], or None
         Of the errors, where the file names one; its diagonal agrees with the errors.
+    wavelength_lo, wavelength_hi : ndarray, shape (n_rows,) [Angstrom], or None
+        Rest wavelengths of the rows, equal where a row is at a single one.
     linked : tuple of str
         Files that were read with it, such as its covariance.
     """
@@ -78,6 +80,8 @@ class DataSet:
     cosmology: Cosmology | None
     logarithmic: bool = False
     covariance: Array | None = None
+    wavelength_lo: Array | None = None
+    wavelength_hi: Array | None = None
     linked: tuple[str, ...] = ()
 
     @property

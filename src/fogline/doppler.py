@@ -20,6 +20,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any, Final
 
 import numpy as np
@@ -175,9 +176,20 @@ def mean_equivalent_width(
     ValueError
         As `doppler_average` does.
     """
-    mean = np.zeros(np.shape(log_nhi))
+    log_nhi = np.ascontiguousarray(log_nhi, dtype=float)
+    plain = tuple(sorted(settings.items()))
+    return _mean_width(log_nhi.tobytes(), log_nhi.shape, plain, line).copy()
+
+
+# Many data sets and tables ask for the same columns, and forty lines take seconds.
+@lru_cache(maxsize=512)
+def _mean_width(
+    columns: bytes, shape: tuple[int, ...], settings: tuple[tuple[str, Any], ...], line: LymanLine
+) -> Array:
+    log_nhi = np.frombuffer(columns).reshape(shape)
+    mean = np.zeros(shape)
     # One b at a time: all at once would hold columns x b x profile nodes in memory.
-    for b, weight in zip(*doppler_average(settings), strict=True):
+    for b, weight in zip(*doppler_average(dict(settings)), strict=True):
         mean += weight * equivalent_width(log_nhi, b, line)
     return mean
 

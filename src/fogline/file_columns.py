@@ -10,6 +10,9 @@ from fogline.quantities.spec import FileSpec
 
 _TEXT_COLUMNS: Final = ("limit", "label")
 
+WAVELENGTHS: Final = ("wavelength", "wavelength_lo", "wavelength_hi")
+"""Columns of rest wavelengths."""
+
 
 def are_counts(raw: RawTable) -> bool:
     """Return whether the rows are counts over a path rather than measured values."""
@@ -58,6 +61,7 @@ def check_columns(raw: RawTable, spec: FileSpec, faults: list[Fault]) -> bool:
 def _known_columns(spec: FileSpec, value_name: str) -> list[str]:
     known = ["z", "z_lo", "z_hi", value_name, "err", "err_lo", "err_hi", *_TEXT_COLUMNS]
     known += ["count", "path"] if spec.counts else []
+    known += WAVELENGTHS if spec.wavelengths else []
     return known + (["log_nhi_lo", "log_nhi_hi"] if spec.column_bins else [])
 
 
@@ -66,10 +70,13 @@ def _missing_columns(names: set[str], spec: FileSpec, value_name: str, counts: b
     pairs += [("err_lo", "err_hi")] if names & {"err_lo", "err_hi"} else []
     pairs += [("count", "path")] if counts else []
     pairs += [("log_nhi_lo", "log_nhi_hi")] if spec.column_bins else []
+    pairs += [WAVELENGTHS[1:]] if names & set(WAVELENGTHS[1:]) else []
     missing = [name for pair in pairs for name in pair if name not in names]
     faults = [f"lacks column '{name}', which {spec.quantity} needs here" for name in missing]
     if not names & {"z", "z_lo", "z_hi"}:
         faults.append("lacks column 'z' (or 'z_lo' and 'z_hi')")
+    if spec.wavelengths and not names & set(WAVELENGTHS):
+        faults.append("lacks column 'wavelength' (or 'wavelength_lo' and 'wavelength_hi')")
     if not counts and value_name not in names:
         also = " (or 'count' and 'path')" if spec.counts else ""
         faults.append(f"lacks column '{value_name}'{also}")
@@ -81,6 +88,8 @@ def _missing_columns(names: set[str], spec: FileSpec, value_name: str, counts: b
 def _clash(name: str, names: set[str], value_name: str, counts: bool) -> str:
     if name == "z" and names & {"z_lo", "z_hi"}:
         return "column 'z' stands beside 'z_lo' and 'z_hi'; allowed is one form only"
+    if name == "wavelength" and names & set(WAVELENGTHS[1:]):
+        return "column 'wavelength' stands beside 'wavelength_lo' and 'wavelength_hi'"
     if name == "err" and names & {"err_lo", "err_hi"}:
         return "column 'err' stands beside 'err_lo' and 'err_hi'; allowed is one form only"
     if counts and name in (value_name, "err", "err_lo", "err_hi", "limit"):

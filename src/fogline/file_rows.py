@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from fogline.ecsv_lines import RawTable
 from fogline.faults import Fault
+from fogline.file_units import in_angstrom
 from fogline.quantities.spec import LOG_NHI_RANGE, FileSpec, ValueColumn, interval
 
 Array = NDArray[np.float64]
@@ -37,6 +38,11 @@ class Rows:
         self._raw = raw
         self._table = table
         self._faults = faults
+
+    @property
+    def raw(self) -> RawTable:
+        """The file."""
+        return self._raw
 
     @property
     def lines(self) -> tuple[int, ...]:
@@ -154,7 +160,9 @@ def check_rows(
     z_lo, z_hi = _check_redshifts(rows)
     log_nhi_lo, log_nhi_hi = _check_column_bins(rows, spec)
     measured = _check_counts(rows) if counts else _check_values(rows, value, meta)
+    wavelengths = _check_wavelengths(rows) if spec.wavelengths else {}
     return {
+        **wavelengths,
         "z_lo": z_lo,
         "z_hi": z_hi,
         "log_nhi_lo": log_nhi_lo,
@@ -177,6 +185,18 @@ def _check_redshifts(rows: Rows) -> tuple[Array, Array]:
         return z, z.copy()
     edges = redshift("z_lo"), redshift("z_hi")
     rows.ordered("z_lo", "z_hi")
+    return edges
+
+
+def _check_wavelengths(rows: Rows) -> dict[str, Array]:
+    if rows.has("wavelength"):
+        single = rows.between("wavelength", 0.0, np.inf) * in_angstrom(rows.raw, "wavelength")
+        return {"wavelength_lo": single, "wavelength_hi": single.copy()}
+    edges = {
+        name: rows.between(name, 0.0, np.inf) * in_angstrom(rows.raw, name)
+        for name in ("wavelength_lo", "wavelength_hi")
+    }
+    rows.ordered("wavelength_lo", "wavelength_hi")
     return edges
 
 

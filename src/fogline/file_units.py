@@ -13,6 +13,7 @@ from astropy.cosmology import units as cosmology_units
 
 from fogline.ecsv_lines import RawColumn, RawTable
 from fogline.faults import Fault
+from fogline.file_columns import WAVELENGTHS
 from fogline.quantities.spec import ValueColumn
 
 _MEASURED: Final = ("value", "log_f", "err", "err_lo", "err_hi")
@@ -47,6 +48,8 @@ def check_units(raw: RawTable, value: ValueColumn | None, faults: list[Fault]) -
         if column.name in _MEASURED:
             if value is not None:
                 _check_measured(raw, column, value, faults)
+        elif column.name in WAVELENGTHS:
+            _check_wavelength(raw, column, faults)
         elif column.name != "label":
             _check_plain(raw, column, faults)
     if value is None:
@@ -62,6 +65,21 @@ def _check_plain(raw: RawTable, column: RawColumn, faults: list[Fault]) -> None:
         also = f" (or {', '.join(allowed)})" if allowed else ""
         what = f"unit of column '{column.name}' is '{column.unit}', must be none{also}"
         faults.append(Fault(raw.path, column.line, what))
+
+
+def _check_wavelength(raw: RawTable, column: RawColumn, faults: list[Fault]) -> None:
+    unit = _parse(raw, column, faults)
+    if unit is not None and not _converts(unit, units.Angstrom):
+        found = f"is '{column.unit}'" if column.unit else "is missing"
+        what = f"unit of column '{column.name}' {found}, must be convertible to Angstrom"
+        faults.append(Fault(raw.path, column.line, what))
+
+
+def in_angstrom(raw: RawTable, name: str) -> float:
+    """Return one unit of a wavelength column in Angstrom."""
+    column = raw.column(name)
+    assert column is not None
+    return float(_unit(column.unit).to(units.Angstrom))
 
 
 def _check_measured(

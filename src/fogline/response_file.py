@@ -41,7 +41,7 @@ ARRAYS = (
 )
 """Fields of `DataSet` that are arrays over rows."""
 
-OPTIONAL_ARRAYS = ("covariance",)
+OPTIONAL_ARRAYS = ("covariance", "wavelength_lo", "wavelength_hi")
 """Fields of `DataSet` that are arrays or None."""
 
 

@@ -58,7 +58,8 @@ def _example_form(spec: FileSpec) -> str:
 
 def _column_names(spec: FileSpec, value: ValueColumn) -> list[str]:
     bins = ["log_nhi_lo", "log_nhi_hi"] if spec.column_bins else []
-    return ["z", *bins, value.name, "err", "label"]
+    wavelengths = ["wavelength"] if spec.wavelengths else []
+    return ["z", *bins, *wavelengths, value.name, "err", "label"]
 
 
 def _columns(spec: FileSpec, value: ValueColumn) -> Iterator[str]:
@@ -66,6 +67,8 @@ def _columns(spec: FileSpec, value: ValueColumn) -> Iterator[str]:
     if spec.column_bins:
         yield "- {name: log_nhi_lo, datatype: float64}   # edges of the bin, log10(N / cm^-2)"
         yield "- {name: log_nhi_hi, datatype: float64}"
+    if spec.wavelengths:
+        yield "- {name: wavelength, unit: Angstrom, datatype: float64}   # at rest"
     unit = f"unit: {value.example_unit}, " if value.example_unit else ""
     yield f"- {{name: {value.name}, {unit}datatype: float64}}   # {value.help}"
     yield f"- {{name: err, {unit}datatype: float64}}   # one sigma"
@@ -75,6 +78,8 @@ def _columns(spec: FileSpec, value: ValueColumn) -> Iterator[str]:
 def _alternatives(spec: FileSpec, value: ValueColumn) -> Iterator[str]:
     yield "# Other columns that may stand here:"
     yield "#   z_lo, z_hi instead of z: a redshift bin (weighted by absorption distance)"
+    if spec.wavelengths:
+        yield "#   wavelength_lo, wavelength_hi instead of wavelength: a bin of rest wavelengths"
     yield "#   err_lo, err_hi instead of err: errors that differ between the sides"
     empty = "" if value.logarithmic else "; err may then be empty"
     yield '#   limit (string): upper, lower or empty (""); value is then the limit at the'
@@ -140,6 +145,7 @@ def _scalar(value: object) -> str:
 
 def _rows(spec: FileSpec, value: ValueColumn) -> Iterator[str]:
     bins = (" 20.3 20.6", " 20.6 20.9") if spec.column_bins else ("", "")
+    bins = (" 880.0", " 900.0") if spec.wavelengths else bins
     for z, columns, label in zip(_REDSHIFTS, bins, ("first", "second"), strict=True):
         numbers = f"{float_text(value.example)} {float_text(value.example_err)}"
         yield f'{z}{columns} {numbers} "{label} row"'

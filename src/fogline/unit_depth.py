@@ -20,6 +20,7 @@ highest source). Accuracy against adaptive quadrature: ``tests/properties/test_a
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from itertools import pairwise
 
@@ -35,6 +36,10 @@ from fogline.quadrature import column_nodes, interval_nodes
 Array = NDArray[np.float64]
 
 Z_NODES = 14
+"""Nodes of f in ln(1+z), at most; fewer where the range is short:"""
+
+LEAST_Z_NODES = 6
+Z_NODES_PER_LN = 4.7
 COEFFICIENTS = 12
 PATH_NODES = 14
 NEWTON_STEPS = 3
@@ -68,24 +73,31 @@ def interpolation_matrix(nodes: Array, points: Array) -> Array:
     return np.asarray(chebyshev.chebvander(to_unit(points), degree) @ np.linalg.inv(vandermonde))
 
 
-def redshift_grid(z_max: float, breaks: Sequence[float] = ()) -> Array:
-    """Return redshifts on which f is tabulated from 0 to `z_max`.
+def redshift_grid(z_max: float, breaks: Sequence[float] = (), z_min: float = 0.0) -> Array:
+    """Return redshifts on which f is tabulated.
 
     Parameters
     ----------
     z_max : float
     breaks : sequence of float, optional
-        Redshifts at which f has kinks: each segment has nodes of its own.
+        Redshifts at which f has kinks: each segment has nodes of its own, from end to end.
+    z_min : float, optional
 
     Returns
     -------
-    ndarray, shape (n_segments * Z_NODES,)
+    ndarray, shape (n_nodes,)
     """
+    edges = np.log1p([z_min, *_inside(breaks, z_min, z_max), z_max])
+    return np.concatenate([np.expm1(_segment_nodes(lo, hi)) for lo, hi in pairwise(edges)])
+
+
+def _segment_nodes(lo: float, hi: float) -> Array:
+    n_nodes = min(Z_NODES, LEAST_Z_NODES + math.ceil(Z_NODES_PER_LN * (hi - lo)))
     # First-kind points do not reach the ends; stretched so that they do, no point extrapolates.
-    points = chebyshev.chebpts1(Z_NODES)
-    edges = np.log1p([0.0, *_inside(breaks, 0.0, z_max), z_max])
-    nodes = [lo + 0.5 * (hi - lo) * (1.0 + points / points.max()) for lo, hi in pairwise(edges)]
-    return np.expm1(np.concatenate(nodes))
+    points = chebyshev.chebpts1(n_nodes)
+    nodes = lo + 0.5 * (hi - lo) * (1.0 + points / points.max())
+    nodes[0], nodes[-1] = lo, hi
+    return np.asarray(nodes)
 
 
 def grid_interpolation(grid: Array, breaks: Sequence[float], z: Array) -> Array:
@@ -97,14 +109,16 @@ def grid_interpolation(grid: Array, breaks: Sequence[float], z: Array) -> Array:
         From `redshift_grid` with the same breaks.
     breaks : sequence of float
     z : ndarray, shape (n_points,)
-        Up to the last redshift of the grid.
+        Between the first and the last redshift of the grid.
     """
     matrix = np.zeros((len(z), len(grid)))
-    inner = _inside(breaks, 0.0, float(grid[-1]))
-    segment = np.searchsorted(inner, z, side="right")
-    for i in range(len(inner) + 1):
-        nodes, here = slice(i * Z_NODES, (i + 1) * Z_NODES), segment == i
-        matrix[here, nodes] = interpolation_matrix(np.log1p(grid[nodes]), np.log1p(z[here]))
+    segment = np.searchsorted(_inside(breaks, float(grid[0]), float(grid[-1])), z, side="right")
+    # Where one segment ends and the next begins a redshift stands twice.
+    starts = [0, *(np.flatnonzero(np.diff(grid) == 0.0) + 1), len(grid)]
+    for i, (start, end) in enumerate(pairwise(starts)):
+        here = np.flatnonzero(segment == i)
+        nodes = np.log1p(grid[start:end])
+        matrix[here, start:end] = interpolation_matrix(nodes, np.log1p(z[here]))
     return matrix
 
 
@@ -137,26 +151,30 @@ def continuum_weights(
     grid: Array,
     distribution: ColumnDistribution,
     cosmology: Cosmology,
+    panel_ends: Sequence[float] = (),
 ) -> tuple[Array, Array]:
     """Return the weights of τ_LC between two redshifts on the nodes (z grid × log N).
 
     Parameters
     ----------
     z_near, z_far : float
-        z_912 and z_em.
+        z_912 and z_em. z_912 below zero is light that is seen at wavelengths shorter than the
+        limit's; it is absorbed from redshift 0 on.
     grid : ndarray, shape (n_z,)
         Redshifts at which f is tabulated: `redshift_grid` with the distribution's breaks.
     distribution : ColumnDistribution
     cosmology : Cosmology
         Cosmology of f(N, X).
+    panel_ends : sequence of float, optional [dex of cm^-2]
+        Further columns at which quadrature panels end.
 
     Returns
     -------
     log_nhi : ndarray, shape (n_columns,) [dex of cm^-2]
     weights : ndarray, shape (n_z, n_columns)
     """
-    log_nhi, d_nhi = column_nodes(*distribution.column_range, distribution.kinks)
-    z, dz = path_nodes(z_near, z_far, distribution.breaks)
+    log_nhi, d_nhi = column_nodes(*distribution.column_range, (*distribution.kinks, *panel_ends))
+    z, dz = path_nodes(max(z_near, 0.0), z_far, distribution.breaks)
     ratio = (1.0 + z) / (1.0 + z_near)
     depth = 10.0**log_nhi * photoionization_cross_section(ratio)[:, None]
     absorbed = -np.expm1(-depth) * d_nhi

@@ -63,6 +63,7 @@ class WalkerResponse:
             ln_f = self.response.distribution.ln_f(self._expanded[None], points)[0]
             weights = np.exp(ln_f)[:, None] * block.weights
             scale = np.abs(weights).max(axis=0)
+            scale[scale == 0.0] = 1.0  # nothing absorbs there
             single = points.basis.astype(np.float32), (weights / scale).astype(np.float32)
             blocks.append((*single, scale))
         return blocks

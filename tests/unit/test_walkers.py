@@ -41,16 +41,19 @@ def test_predictions_agree_over_the_prior(posterior):
     with np.errstate(under="ignore", over="ignore"):
         single, double = (r.predict(theta) for r in (posterior.walkers, posterior.response))
     # Mean fluxes are exp(-τ), which turns a relative error of a large τ into one τ times larger.
-    tau_rows = np.isin(np.arange(single.shape[1]), flux_rows(posterior.response))
-    assert_allclose(single[:, ~tau_rows], double[:, ~tau_rows], rtol=1e-5)
-    assert_allclose(single[:, tau_rows], double[:, tau_rows], atol=2e-6)
+    is_flux = np.isin(np.arange(single.shape[1]), flux_rows(posterior.response))
+    assert_allclose(single[:, ~is_flux], double[:, ~is_flux], rtol=1e-5)
+    seen = is_flux & (double > 1e-4) & (double < 10.0)
+    assert seen.sum() > 300
+    # Ratios of fluxes at depths of hundreds, of which single precision knows 1e-5.
+    assert_allclose(single[seen], double[seen], rtol=5e-3)
 
 
 def flux_rows(response):
     rows = [
         np.arange(part.start, part.stop)
         for data, part in zip(response.datasets, response.slices, strict=True)
-        if data.meta.get("form") == "mean_flux"
+        if data.meta.get("form") == "mean_flux" or data.quantity == "continuum_flux"
     ]
     return np.concatenate(rows)
 

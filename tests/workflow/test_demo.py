@@ -25,8 +25,11 @@ def script():
 
 def test_files_are_what_the_script_draws(script, tmp_path: Path) -> None:
     script.main(tmp_path)
-    drawn = sorted(path.name for path in tmp_path.glob("*.ecsv"))
-    assert drawn == sorted(path.name for path in (PROJECT / "config/demo").glob("*.ecsv"))
+    drawn, shipped = (
+        sorted(str(path.relative_to(folder)) for path in folder.rglob("*.ecsv"))
+        for folder in (tmp_path, PROJECT / "config/demo")
+    )
+    assert drawn == shipped
     for name in drawn:
         assert (tmp_path / name).read_text() == (PROJECT / "config/demo" / name).read_text(), name
 
@@ -40,6 +43,8 @@ def test_demo_covers_every_quantity_and_its_forms(monkeypatch) -> None:
         "mean_free_path",
         "column_distribution",
         "hi_density",
+        "lyman_series_opacity",
+        "continuum_flux",
     }
     assert any(data.counts for data in datasets)
     assert any((data.limit > 0).any() for data in datasets)

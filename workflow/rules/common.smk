@@ -5,6 +5,7 @@ import sys
 
 from fogline.plan import DERIVED, FIGURES, closing_words, read_study
 from fogline.faults import InputError
+from fogline.linked_files import linked_files
 from fogline.provenance import code_hash, settings_hash
 
 # Products of one walker batch are too small to share among threads, and ensembles run side by side.

@@ -1,6 +1,11 @@
 rule build_response:
     input:
         datasets=lambda wildcards: analysis_of(wildcards).datasets,
+        linked=lambda wildcards: [
+            linked
+            for path in analysis_of(wildcards).datasets
+            for linked in linked_files(path)
+        ],
     output:
         response="results/{analysis}/response.h5",
     log:
@@ -10,7 +15,9 @@ rule build_response:
         runtime=10,
     params:
         model=lambda wildcards: settings_hash(
-            analysis_of(wildcards).model, analysis_of(wildcards).cosmology
+            analysis_of(wildcards).model,
+            analysis_of(wildcards).cosmology,
+            analysis_of(wildcards).nuisances,
         ),
         code=code_hash("fogline.response_file", "fogline.constraint_files"),
     script:

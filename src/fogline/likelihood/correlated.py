@@ -57,17 +57,23 @@ class CorrelatedRows:
 
     def ln_rows(self, model: Array, scatter: Array | None) -> Array:
         """Return the share of every eigenvector in ln p, shape (n, k)."""
-        residual = (model[:, self.rows] - self.data.observed[self.rows]) @ self._eigen[1]
+        residual = model[:, self.rows] - self.data.observed[self.rows]
+        # An infinite prediction fits no datum; in the product it would become NaN.
+        beyond = np.isinf(residual).any(axis=1, keepdims=True)
+        residual = np.where(beyond, 0.0, residual) @ self._eigen[1]
         variances = self._variances(scatter)
-        squares = residual**2 / variances
+        with np.errstate(over="ignore"):
+            squares = residual**2 / variances
         shares = -0.5 * np.log(variances) - LN_ROOT_2PI - self._jacobian
         dof, k = float(self.data.student_dof[self.rows[0]]), len(self.rows)
         if np.isfinite(dof):
             total = squares.sum(axis=1, keepdims=True)
             norm = gammaln(0.5 * (dof + k)) - gammaln(0.5 * dof) - 0.5 * k * np.log(0.5 * dof)
             joint = norm - 0.5 * (dof + k) * np.log1p(total / dof)
-            return np.asarray(shares + joint / k)
-        return np.asarray(shares - 0.5 * squares)
+            shares = shares + joint / k
+        else:
+            shares = shares - 0.5 * squares
+        return np.where(beyond, -np.inf, shares)
 
     def replicate(self, model: Array, scatter: Array | None, rng: np.random.Generator) -> Array:
         """Draw replicates, shape (n, k)."""

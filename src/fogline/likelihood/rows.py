@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -53,9 +54,9 @@ class NormalRows:
 
     def replicate(self, model: Array, scatter: Array | None, rng: np.random.Generator) -> Array:
         """Draw replicates, shape (n, k)."""
-        shape = (len(model), len(self.rows))
-        step = np.abs(rng.standard_normal(shape))
-        return _stepped(model[:, self.rows], self.data.sigmas(self.rows, scatter), step, rng)
+        return _stepped(
+            model[:, self.rows], self.data.sigmas(self.rows, scatter), rng, rng.standard_normal
+        )
 
     def standardize(self, data: Array, model: Array, scatter: Array | None) -> Array:
         """Return pulls with the σ of the prediction's side."""
@@ -81,8 +82,11 @@ class StudentRows(NormalRows):
 
     def replicate(self, model: Array, scatter: Array | None, rng: np.random.Generator) -> Array:
         """Draw replicates, shape (n, k)."""
-        step = np.abs(rng.standard_t(self._dof, (len(model), len(self.rows))))
-        return _stepped(model[:, self.rows], self.data.sigmas(self.rows, scatter), step, rng)
+
+        def draw(shape: tuple[int, ...]) -> Array:
+            return rng.standard_t(self._dof, shape)
+
+        return _stepped(model[:, self.rows], self.data.sigmas(self.rows, scatter), rng, draw)
 
 
 @dataclass(frozen=True)
@@ -107,10 +111,13 @@ class LimitRows:
     def replicate(self, model: Array, scatter: Array | None, rng: np.random.Generator) -> Array:
         """Draw the measurements behind limits, shape (n, k)."""
         sigma = self.data.sigmas(self.rows, scatter)[1]
-        shape = (len(model), len(self.rows))
-        # dof infinite is the normal.
-        dof = np.minimum(self.data.student_dof[self.rows], 1e9)
-        return np.asarray(model[:, self.rows] + sigma * rng.standard_t(dof, shape))
+        noise = rng.standard_normal((len(model), len(self.rows)))
+        dof = self.data.student_dof[self.rows]
+        heavy = np.isfinite(dof)
+        if heavy.any():  # Student's t is a normal over the root of a chi-square
+            spread = rng.chisquare(dof[heavy], (len(model), heavy.sum())) / dof[heavy]
+            noise[:, heavy] /= np.sqrt(spread)
+        return np.asarray(model[:, self.rows] + sigma * noise)
 
     def standardize(self, data: Array, model: Array, scatter: Array | None) -> Array:
         """Return pulls of the measurements behind limits."""
@@ -160,9 +167,12 @@ def _ln_split(lo: Array, hi: Array) -> Array:
 
 
 def _stepped(
-    model: Array, sigmas: tuple[Array, Array], step: Array, rng: np.random.Generator
+    model: Array,
+    sigmas: tuple[Array, Array],
+    rng: np.random.Generator,
+    draw: Callable[[tuple[int, ...]], Array],
 ) -> Array:
     lo, hi = sigmas
     # p(y | m) as a density in y: below m the datum's upper error is the one that counts.
     below = rng.random(model.shape) * (lo + hi) < hi
-    return np.asarray(model + step * np.where(below, -hi, lo))
+    return np.asarray(model + np.abs(draw(model.shape)) * np.where(below, -hi, lo))

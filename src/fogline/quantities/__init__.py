@@ -4,9 +4,11 @@ from typing import Final
 
 from fogline.quantities.base import Block, Quantity, Setting
 from fogline.quantities.column_distribution import ColumnDistributionBins
+from fogline.quantities.continuum_flux import ContinuumFlux
 from fogline.quantities.hi_density import HiDensity
 from fogline.quantities.lls_incidence import LlsIncidence
 from fogline.quantities.lya_opacity import LyaOpacity
+from fogline.quantities.lyman_series_opacity import LymanSeriesOpacity
 from fogline.quantities.mean_free_path import MeanFreePath
 from fogline.quantities.spec import FileSpec
 
@@ -18,6 +20,8 @@ QUANTITIES: Final[dict[str, Quantity]] = {
         MeanFreePath(),
         ColumnDistributionBins(),
         HiDensity(),
+        LymanSeriesOpacity(),
+        ContinuumFlux(),
     )
 }
 """Every quantity by its name in constraint files."""

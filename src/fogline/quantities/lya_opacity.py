@@ -36,29 +36,35 @@ from fogline.settings import Distribution
 
 Array = NDArray[np.float64]
 
+FORM: Final = MetaKey(
+    "form",
+    "choice",
+    "what the numbers are: tau (-ln mean flux), mean_flux, decrement (1 - mean flux)",
+    choices=("tau", "mean_flux", "decrement"),
+    example="tau",
+)
+"""The meta key that says what the numbers of an effective optical depth are."""
+
+VALUES: Final = {
+    "tau": ValueColumn(example=0.25, example_err=0.02, help="effective optical depth"),
+    "mean_flux": ValueColumn(
+        maximum=1.0, example=0.78, example_err=0.02, help="mean transmitted flux"
+    ),
+    "decrement": ValueColumn(
+        maximum=1.0, example=0.22, example_err=0.02, help="1 - mean transmitted flux"
+    ),
+}
+"""The measured column in each of these forms."""
+
 SPEC: Final = FileSpec(
     quantity="lya_opacity",
     description="Effective optical depth of the Lyα forest, mean flux, or flux decrement.",
     meta=(
-        MetaKey(
-            "form",
-            "choice",
-            "what the numbers are: tau (-ln mean flux), mean_flux, decrement (1 - mean flux)",
-            choices=("tau", "mean_flux", "decrement"),
-            example="tau",
-        ),
+        FORM,
         column_key("min", "lowest column counted", True, 12.0),
         column_key("max", "highest column counted (optically thick ones removed?)", True, 17.2),
     ),
-    values={
-        "tau": ValueColumn(example=0.25, example_err=0.02, help="effective optical depth"),
-        "mean_flux": ValueColumn(
-            maximum=1.0, example=0.78, example_err=0.02, help="mean transmitted flux"
-        ),
-        "decrement": ValueColumn(
-            maximum=1.0, example=0.22, example_err=0.02, help="1 - mean transmitted flux"
-        ),
-    },
+    values=VALUES,
     form_key="form",
 )
 
@@ -86,9 +92,20 @@ class LyaOpacity:
 
     def reduce(self, data: DataSet, raw: Array, constants: Mapping[str, Array]) -> Array:
         """Return τ, mean flux or decrement of every row."""
-        form = data.meta["form"]
-        if form == "mean_flux":
-            raw = np.exp(-raw)
-        elif form == "decrement":
-            raw = -np.expm1(-raw)
-        return np.asarray(raw @ constants["mean"])
+        return reduce_tau(data.meta["form"], raw, constants["mean"])
+
+
+def reduce_tau(form: str, tau: Array, mean: Array) -> Array:
+    """Return effective optical depths in a form, averaged over redshift bins.
+
+    Parameters
+    ----------
+    form : {"tau", "mean_flux", "decrement"}
+    tau : ndarray, shape (..., n_nodes)
+    mean : ndarray, shape (n_nodes, n_rows)
+    """
+    if form == "mean_flux":
+        tau = np.exp(-tau)
+    elif form == "decrement":
+        tau = -np.expm1(-tau)
+    return np.asarray(tau @ mean)

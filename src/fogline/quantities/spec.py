@@ -195,6 +195,8 @@ class FileSpec:
         Whether columns ``count`` and ``path`` may stand instead of the measured column.
     column_bins : bool
         Whether rows carry ``log_nhi_lo`` and ``log_nhi_hi``.
+    wavelengths : bool
+        Whether rows carry ``wavelength``, or ``wavelength_lo`` and ``wavelength_hi``, at rest.
     cosmology_when : mapping of str to tuple of str, or None
         ``cosmology`` is required where all named meta keys have one of these values (an empty
         mapping: always); None: never required.
@@ -209,6 +211,7 @@ class FileSpec:
     form_key: str = ""
     counts: bool = False
     column_bins: bool = False
+    wavelengths: bool = False
     cosmology_when: dict[str, tuple[str, ...]] | None = None
     exactly_one_of: tuple[tuple[str, ...], ...] = ()
 
