@@ -313,6 +313,28 @@ def main(directory: str | Path = Path(__file__).parent) -> None:
         if survey.correlation is not None:
             write(_correlation_table(survey), directory, survey.meta["covariance"])
 
+    write(filter_curve(), directory, "filters/saltmarsh_u.ecsv")
+    write(background(), directory, "background/photoionization_rate.ecsv")
+
+
+def filter_curve() -> Table:
+    """Return the throughput of the programme's blue filter, which is invented as well."""
+    table = Table()
+    table["wavelength"] = np.array([3250.0, 3400.0, 3600.0, 3800.0, 3950.0]) * units.Angstrom
+    table["throughput"] = [0.0, 0.62, 0.71, 0.66, 0.0]
+    table.meta = {"kind": "filter", "source": "Saltmarsh programme, invented"}
+    return table
+
+
+def background() -> Table:
+    """Return a photoionization rate, as invented as the rest."""
+    table = Table()
+    table["z"] = [2.2, 2.8, 3.4, 4.0, 4.6]
+    table["value"] = np.array([1.1e-12, 9.5e-13, 8.0e-13, 7.5e-13, 7.0e-13]) / units.s
+    table["err"] = np.array([2.5e-13, 2.0e-13, 2.0e-13, 2.0e-13, 2.5e-13]) / units.s
+    table.meta = {"kind": "photoionization_rate", "source": "Saltmarsh programme, invented"}
+    return table
+
 
 def write(table: Table, directory: str | Path, name: str) -> None:
     """Write one file of the demo, whole or not at all."""

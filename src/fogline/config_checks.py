@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Callable, Iterator, Mapping, Sequence
+from pathlib import Path
 from typing import Any
 
 from fogline.config_schema import PlacedFault
 from fogline.config_settings import HIGH_COLUMN_PRIORS
 from fogline.cosmology_keys import cosmology_faults
 from fogline.faults import nearest
-from fogline.settings import Study
+from fogline.settings import BACKGROUNDS, Study
 from fogline.yaml_lines import Place, dotted
 
 _MOST_REDSHIFTS = 10_000
@@ -143,6 +145,32 @@ def _derive_faults(derive: Mapping[str, Any]) -> Iterator[PlacedFault]:
         what = f"derive.redshifts.step is {grid['step']:g}, which makes more than {_MOST_REDSHIFTS}"
         yield (*place, "step"), f"{what} redshifts"
     yield from _increasing(derive["column_redshifts"], ("derive", "column_redshifts"))
+    yield from _increasing(derive["source_redshifts"], ("derive", "source_redshifts"))
+    yield from _filter_faults(derive["filters"])
+    given = [kind for kind in BACKGROUNDS if derive["background"].get(kind)]
+    place = ("derive", "background")
+    if len(given) > 1:
+        yield (*place, given[1]), f"{dotted(place)} has {' and '.join(given)}; allowed is one"
+    for kind in given:
+        file = derive["background"][kind]
+        if not os.path.isfile(file):
+            what = f"{dotted((*place, kind))} names {file!r}, but there is no such file"
+            yield (*place, kind), what
+
+
+def _filter_faults(filters: Sequence[Any]) -> Iterator[PlacedFault]:
+    names: list[str] = []
+    for i, item in enumerate(filters):
+        place: Place = ("derive", "filters", i)
+        name = item["name"] if isinstance(item, Mapping) else Path(item).stem
+        if not isinstance(item, Mapping) and not os.path.isfile(item):
+            yield place, f"{dotted(place)} names {item!r}, but there is no such file"
+        elif isinstance(item, Mapping) and not item["lo"] < item["hi"]:
+            what = f"{dotted((*place, 'hi'))} is {item['hi']:g}, must be greater than lo"
+            yield (*place, "hi"), f"{what} = {item['lo']:g}"
+        if name in names:
+            yield place, f"{dotted(place)} is a second filter named '{name}'"
+        names.append(name)
 
 
 def distribution_faults(study: Study, name: str) -> Iterator[PlacedFault]:
@@ -182,6 +210,9 @@ def distribution_faults(study: Study, name: str) -> Iterator[PlacedFault]:
         names = HIGH_COLUMN_PRIORS[model.high_column.form]
         for key, prior in zip(names, model.high_column.priors, strict=True):
             checks.append((("model", "high_column", "prior", key), frozen, prior))
+    if analysis.derive.dust is not None:
+        depth = analysis.derive.dust["optical_depth"]
+        checks.append((("derive", "dust", "optical_depth"), positive, depth))
     for dataset, block in analysis.nuisances.items():
         for kind in FREE_NUISANCES:
             if block.get(kind) is not None:

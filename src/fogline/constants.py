@@ -19,6 +19,9 @@ KM_CM: Final = 1e5
 ANGSTROM_CM: Final = 1e-8
 """One Angstrom [cm], exact."""
 
+PLANCK_CGS: Final = float(constants.h.to_value("erg s"))
+"""Planck's constant [erg s]."""
+
 MPC_CM: Final = float(units.Mpc.to("cm"))
 """One megaparsec [cm] (IAU 2015 resolution B2)."""
 

@@ -2,14 +2,25 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from pathlib import Path
 
+import numpy as np
+from numpy.typing import NDArray
+
 from fogline.combining import replicate_rng
+from fogline.datasets import DataSet
 from fogline.derived import Draws, write_derived
+from fogline.filters import read_filters
 from fogline.posterior_file import read_draws
 from fogline.predictive import check_predictive, predictive_table
+from fogline.quantities import Setting
 from fogline.response_file import Fit
+from fogline.settings import AnalysisSettings
+from fogline.side_tables import read_side_table
 from fogline.tables import write_table
+
+Array = NDArray[np.float64]
 
 
 def derive_tables(fit: Fit, posterior: str | Path, directory: str | Path) -> None:
@@ -26,7 +37,40 @@ def derive_tables(fit: Fit, posterior: str | Path, directory: str | Path) -> Non
     derive = fit.analysis.derive
     theta = read_draws(posterior, derive.draws)
     meta = fit.table_meta() | {"draws": len(theta)}
-    write_derived(Draws(theta, fit.setting, derive), directory, with_bands=True, **meta)
+    draws = make_draws(theta, fit.setting, fit.analysis, highest_column(fit.response.datasets))
+    write_derived(draws, directory, with_bands=True, **meta)
+
+
+def make_draws(
+    theta: Array, setting: Setting, analysis: AnalysisSettings, highest: float | None = None
+) -> Draws:
+    """Return parameter vectors with all that derived quantities need beside them.
+
+    Parameters
+    ----------
+    theta : ndarray, shape (n_draws, n_parameters)
+    setting : Setting
+    analysis : AnalysisSettings
+    highest : float, optional [dex of cm^-2]
+        Upper end of the columns that data speak of.
+
+    Raises
+    ------
+    InputError
+        With the faults of filters and other tables.
+    """
+    derive = analysis.derive
+    kind = derive.background_kind
+    background = read_side_table(derive.background[kind], kind) if kind else {}
+    filters = read_filters(derive.filters)
+    seed = analysis.sampler.seed
+    return Draws(theta, setting, derive, filters, seed, kind, background, highest)
+
+
+def highest_column(datasets: Sequence[DataSet]) -> float | None:
+    """Return the upper end of the columns that data sets counted in bins; None without such."""
+    ends = [data.log_nhi_hi.max() for data in datasets if data.quantity == "column_distribution"]
+    return float(max(ends)) if ends else None
 
 
 def write_predictive(fit: Fit, posterior: str | Path, table: str | Path) -> None:

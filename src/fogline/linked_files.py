@@ -57,7 +57,6 @@ def _meta(path: str | os.PathLike[str]) -> dict[str, Any]:
     except (OSError, UnicodeDecodeError, yaml.YAMLError):
         return {}
     meta = header.get("meta") if isinstance(header, dict) else None
-    if isinstance(meta, list):  # astropy writes a plain mapping as a list of pairs
-        pairs = [item for item in meta if isinstance(item, dict)]
-        return {key: value for pair in pairs for key, value in pair.items()}
+    if isinstance(meta, list):  # astropy writes a mapping as ordered pairs
+        return dict(pair for pair in meta if isinstance(pair, tuple))
     return meta if isinstance(meta, dict) else {}

@@ -22,6 +22,13 @@ DERIVED: Final = (
     "lya_opacity",
     "mean_free_path",
     "opacity_budget",
+    "transmission",
+    "sightline_scatter",
+    "escape_correction",
+    "opacity_classes",
+    "depth_path",
+    "ionizing_background",
+    "breakthrough",
 )
 """Names of the derived tables, in the order of `fogline.derived.DERIVED_TABLES`."""
 
@@ -32,6 +39,10 @@ FIGURES: Final = (
     "mean_free_path",
     "hi_density",
     "opacity_budget",
+    "transmission",
+    "escape_correction",
+    "depth_path",
+    "ionizing_background",
     "corner",
     "pulls",
     "convergence",

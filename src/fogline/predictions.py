@@ -9,7 +9,8 @@ from astropy.table import Table
 from numpy.typing import NDArray
 
 from fogline.datasets import DataSet
-from fogline.derived import Draws, write_derived
+from fogline.derived import write_derived
+from fogline.deriving import make_draws
 from fogline.predictive import row_table
 from fogline.response_file import build_fit, setting_of
 from fogline.settings import AnalysisSettings
@@ -51,5 +52,5 @@ def write_derived_at(analysis: AnalysisSettings, point: Array, directory: str | 
     point : ndarray, shape (n_parameters,)
     directory : path-like
     """
-    draws = Draws(point[None], setting_of(analysis), analysis.derive)
+    draws = make_draws(point[None], setting_of(analysis), analysis)
     write_derived(draws, directory, with_bands=False, analysis=analysis.name)

@@ -10,6 +10,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
+BACKGROUNDS = ("photoionization_rate", "mean_intensity", "emissivity")
+"""Kinds of tables from which sources or their background follow."""
+
 Distribution = Mapping[str, Any]
 """A scipy distribution by name and arguments, e.g. ``{dist: norm, loc: 1.5, scale: 1.5}``."""
 
@@ -98,6 +101,30 @@ class DeriveSettings:
     redshifts: tuple[float, ...]
     column_redshifts: tuple[float, ...]  # redshifts of tables that run along log N
     draws: int
+    source_redshifts: tuple[float, ...] = (2.5, 3.0, 3.5, 4.0)
+    rest_wavelengths: tuple[float, ...] = tuple(range(600, 1260, 20))  # at the source [Angstrom]
+    sightlines: int = 2000  # drawn for each filter and source
+    # Files, or mappings {name, lo, hi, frame}.
+    filters: tuple[Any, ...] = ({"name": "lyc_880_910", "lo": 880.0, "hi": 910.0, "frame": "rest"},)
+    opacity_wavelengths: tuple[float, ...] = (912.0, 700.0, 500.0)  # at the absorber [Angstrom]
+    # One file under photoionization_rate, mean_intensity or emissivity (or none of them), and
+    # spectral_index, x_max of the sources.
+    background: Mapping[str, Any] = field(
+        default_factory=lambda: {"spectral_index": 1.7, "x_max": 4.0}
+    )
+    helium_factor: float = 1.3  # of Ω_gas
+    dust: Mapping[str, Any] | None = None  # arguments of fogline.dust.DustModel
+
+    @property
+    def side_files(self) -> tuple[str, ...]:
+        """Tables that the derived quantities need beside the posterior."""
+        given = [self.background[kind] for kind in BACKGROUNDS if self.background.get(kind)]
+        return (*(item for item in self.filters if isinstance(item, str)), *given)
+
+    @property
+    def background_kind(self) -> str:
+        """Kind of background or emissivity that is given; empty where none is."""
+        return next((kind for kind in BACKGROUNDS if self.background.get(kind)), "")
 
 
 @dataclass(frozen=True)

@@ -18,6 +18,7 @@ from fogline.config import load_config
 from fogline.faults import InputError
 from fogline.points import read_point
 from fogline.quantities import FILE_SPECS
+from fogline.side_tables import SIDE_TABLES
 from fogline.templates import template
 
 CONFIG = """\
@@ -158,7 +159,15 @@ def test_template_names_the_nearest_quantity(capsys):
 def test_template_without_quantity_lists_them(capsys):
     assert main(["template"]) == 0
     lines = capsys.readouterr().out.splitlines()
-    assert [line.split()[0] for line in lines] == list(FILE_SPECS)
+    assert [line.split()[0] for line in lines] == [*FILE_SPECS, *SIDE_TABLES]
+
+
+@pytest.mark.parametrize("kind", SIDE_TABLES)
+def test_template_of_a_side_table_passes_check(study, capsys, kind):
+    assert main(["template", kind]) == 0
+    (study / "side.ecsv").write_text(capsys.readouterr().out, encoding="utf-8")
+    assert main(["check", "side.ecsv"]) == 0
+    assert f"side.ecsv: good {kind} table" in capsys.readouterr().out
 
 
 # predict and derive

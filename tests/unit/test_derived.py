@@ -32,7 +32,9 @@ def test_every_table_has_rows_and_a_definition():
         assert len(table.definition) > 40
         (first, *_) = table.keys(DRAWS).values()
         for curve in table.curves(DRAWS).values():
-            assert curve.values.shape == (1, len(first[0])), name
+            assert curve.values.shape[1] == len(first[0]), name
+            if not getattr(table, "over_sightlines", False):
+                assert len(curve.values) == 1, name
 
 
 def test_column_distribution_is_f_on_its_grid():
@@ -88,7 +90,13 @@ def test_both_free_paths_are_proper_mpc():
     unit_depth = [reference.unit_depth_free_path(TRUTH, z, TRUTH.cosmology) for z in Z]
     assert_allclose(found["local"], local, rtol=RTOL)
     assert_allclose(found["unit_depth"], unit_depth, rtol=RTOL)
-    assert {curve.unit for curve in curves("mean_free_path").values()} == {"Mpc"}
+    assert {name: curve.unit for name, curve in curves("mean_free_path").items()} == {
+        "local": "Mpc",
+        "unit_depth": "Mpc",
+        "dz_unit_depth": "",
+    }
+    steps = [z - TRUTH.z_of_unit_depth(z) for z in Z]
+    assert_allclose(found["dz_unit_depth"], steps, rtol=1e-4)
 
 
 def test_opacity_budget_integrates_to_the_opacity_and_to_one():

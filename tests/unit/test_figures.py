@@ -355,7 +355,7 @@ UNITS = {
     "lls_incidence": (["per unit $z$", "per unit $X$"], "redshift"),
     "mean_free_path": (["[proper Mpc]"], "redshift"),
     "hi_density": (["M_\\odot\\,\\mathrm{Mpc}^{-3}", "share"], "redshift"),
-    "opacity_budget": (["dex$^{-1}$"], "cm}^{-2}"),
+    "opacity_budget": (["dex$^{-1}$", "share below"], "cm}^{-2}"),
 }
 """What the y labels of each figure's panels and its lowest x label must say."""
 

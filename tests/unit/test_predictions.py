@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
+from fogline.plan import DERIVED
 from fogline.posterior import Posterior
 from fogline.predictions import predict_table, write_derived_at
 from fogline.priors import Prior
@@ -47,15 +48,11 @@ def test_ln_likelihood_is_that_of_the_posterior(datasets):
 def test_derived_tables_at_a_point_have_no_bands(tmp_path):
     write_derived_at(ANALYSIS, THETA, tmp_path / "derived")
     names = sorted(path.stem for path in (tmp_path / "derived").iterdir())
-    assert names == [
-        "column_distribution",
-        "hi_density",
-        "incidence",
-        "lya_opacity",
-        "mean_free_path",
-        "opacity_budget",
-    ]
+    assert names == sorted(DERIVED)
     table = read_table(tmp_path / "derived" / "mean_free_path.ecsv")
-    assert table.colnames == ["z", "local", "unit_depth"]
+    assert table.colnames == ["z", "local", "unit_depth", "dz_unit_depth"]
     assert table["z"].tolist() == [2.0, 3.0, 4.0]
     assert table.meta["analysis"] == "small"
+    # Sightlines scatter at a single point too.
+    scatter = read_table(tmp_path / "derived" / "sightline_scatter.ecsv")
+    assert all(scatter["transmission_lo68"] < scatter["transmission_hi68"])

@@ -2,6 +2,7 @@ rule derive_tables:
     input:
         response="results/{analysis}/response.h5",
         posterior="results/{analysis}/posterior.nc",
+        sides=lambda wildcards: analysis_of(wildcards).derive.side_files,
     output:
         expand("results/{{analysis}}/tables/{table}.ecsv", table=DERIVED),
     log:

@@ -31,29 +31,60 @@ def add_to(commands: Any) -> None:
         metavar="C",
         help=f"config file (default: {DEFAULT_CONFIG} where no FILE is given)",
     )
-    parser.add_argument("files", metavar="FILE", nargs="*", help="constraint file")
+    parser.add_argument("files", metavar="FILE", nargs="*", help="constraint file, or side table")
     parser.set_defaults(run=run)
 
 
 def run(options: argparse.Namespace) -> None:
     """Check what the options name and print the data sets."""
+    from fogline.side_tables import side_kind
+
     faults: list[Fault] = []
     config = options.config
     if config is None and not options.files:
         config = DEFAULT_CONFIG
     study = None if config is None else _check_config(config, faults)
     analyses = [] if study is None else list(study.analyses.values())
-    datasets = _read_all([*_files_of(analyses), *options.files], faults)
+    sides, files = _told_apart(options.files)
+    datasets = _read_all([*_files_of(analyses), *files], faults)
     for analysis in analyses:
         faults.extend(_analysis_faults(analysis, datasets))
-    extra = {os.path.normpath(path) for path in options.files} - set(_files_of(analyses))
+    faults.extend(_side_faults(_side_files(analyses) + sides))
+    extra = {os.path.normpath(path) for path in files} - set(_files_of(analyses))
     if analyses:
         faults.extend(_extra_faults([datasets[path] for path in extra & set(datasets)], analyses))
     if faults:
         raise InputError(faults)
-    print(_listing(list(datasets.values())))
+    if datasets:
+        print(_listing(list(datasets.values())))
+    for path in sides:
+        print(f"{path}: good {side_kind(path)} table")
     if study is not None:
         print(f"{config}: {_listed('analysis', 'analyses', list(study.analyses))}")
+
+
+def _told_apart(paths: Iterable[str]) -> tuple[list[str], list[str]]:
+    """Return side tables, such as filters, and constraint files."""
+    from fogline.side_tables import side_kind
+
+    sides = [path for path in paths if side_kind(path)]
+    return sides, [path for path in paths if path not in sides]
+
+
+def _side_files(analyses: Iterable[AnalysisSettings]) -> list[str]:
+    return list(dict.fromkeys(path for a in analyses for path in a.derive.side_files))
+
+
+def _side_faults(paths: Iterable[str]) -> list[Fault]:
+    from fogline.side_tables import read_side_table
+
+    faults: list[Fault] = []
+    for path in paths:
+        try:
+            read_side_table(path)
+        except InputError as error:
+            faults.extend(error.faults)
+    return faults
 
 
 def _check_config(path: str, faults: list[Fault]) -> Study | None:

@@ -22,7 +22,7 @@ def add_to(commands: Any) -> None:
         "quantity",
         metavar="QUANTITY",
         nargs="?",
-        help="what is measured; without it, all are listed",
+        help="what is measured, or a kind of table beside it; without it, all are listed",
     )
     parser.set_defaults(run=run)
 
@@ -31,14 +31,18 @@ def run(options: argparse.Namespace) -> None:
     """Print the template of ``options.quantity``, or the quantities that there are."""
     # Here, not above: the quantities bring scipy and astropy, which --help does not need.
     from fogline.quantities import FILE_SPECS
+    from fogline.side_tables import SIDE_TABLES, side_template
     from fogline.templates import template
 
+    known = {name: spec.description for name, spec in (FILE_SPECS | SIDE_TABLES).items()}
     if options.quantity is None:
-        width = max(map(len, FILE_SPECS))
-        for name, spec in FILE_SPECS.items():
-            print(f"{name:<{width}}  {spec.description}")
-        return
-    if options.quantity not in FILE_SPECS:
-        hint = nearest(options.quantity, FILE_SPECS)
+        width = max(map(len, known))
+        for name, description in known.items():
+            print(f"{name:<{width}}  {description}")
+    elif options.quantity in FILE_SPECS:
+        sys.stdout.write(template(options.quantity))
+    elif options.quantity in SIDE_TABLES:
+        sys.stdout.write(side_template(options.quantity))
+    else:
+        hint = nearest(options.quantity, known)
         raise UsageError(f"unknown quantity '{options.quantity}'; {hint}")
-    sys.stdout.write(template(options.quantity))

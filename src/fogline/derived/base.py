@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
-from typing import Protocol
+from dataclasses import dataclass, field
+from typing import Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
+from fogline.dust import DustModel
+from fogline.filters import LYMAN_CONTINUUM, Filter
+from fogline.local_sources import Spectrum
 from fogline.quadrature import column_nodes
 from fogline.quantities.base import Block, Setting
 from fogline.response import raw_predictions
@@ -24,6 +27,9 @@ SUB_DLA_LOG_NHI = 19.0
 DLA_LOG_NHI = 20.3
 """Common practice: sub-DLAs from 10^19, DLAs from 2 × 10^20 cm^-2."""
 
+SIGHTLINE_DRAWS = 100
+"""Posterior draws among which sightlines are shared out, at most."""
+
 COLUMN_STEP = 0.05
 """Spacing of tables along log N [dex]."""
 
@@ -37,11 +43,47 @@ class Draws:
     theta : ndarray, shape (n_draws, n_parameters)
     setting : Setting
     derive : DeriveSettings
+    filters : tuple of Filter
+        For transmissions through filters.
+    seed : int
+        Of whatever is drawn at random.
+    background_kind : str
+        Kind of the given background or emissivity; empty where none is given.
+    background : mapping of str to ndarray
+        Its columns ``z value err``.
+    highest_column : float, optional [dex of cm^-2]
+        Upper end of the columns that any data set counted.
     """
 
     theta: Array
     setting: Setting
     derive: DeriveSettings
+    filters: tuple[Filter, ...] = (LYMAN_CONTINUUM,)
+    seed: int = 0
+    background_kind: str = ""
+    background: Mapping[str, Array] = field(default_factory=dict)
+    highest_column: float | None = None
+
+    @property
+    def spectrum(self) -> Spectrum:
+        """Spectrum of the sources."""
+        background = self.derive.background
+        return Spectrum(float(background["spectral_index"]), float(background["x_max"]))
+
+    @property
+    def dust(self) -> DustModel | None:
+        """Model of the sightlines that dust hides; None where none is configured."""
+        return None if self.derive.dust is None else DustModel(**self.derive.dust)
+
+    @property
+    def sightline_draws(self) -> int:
+        """Posterior draws among which sightlines are shared out."""
+        return min(self.derive.sightlines, SIGHTLINE_DRAWS)
+
+    @property
+    def sightlines_per_draw(self) -> int:
+        """Sightlines of each of them."""
+        return -(-self.derive.sightlines // self.sightline_draws)
 
     @property
     def z(self) -> Array:
@@ -106,7 +148,7 @@ class DerivedTable(Protocol):
     definition: str
     """Definition and caution, for the table's meta."""
 
-    def keys(self, draws: Draws) -> Mapping[str, tuple[Array, str, str]]:
+    def keys(self, draws: Draws) -> Mapping[str, tuple[Any, str, str]]:
         """Return the leading columns."""
         ...
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -24,7 +25,7 @@ class OpacityBudgetTable:
     definition = (
         "opacity_per_dex: contribution of each dex of column to the opacity at 912 A (inverse "
         "proper length); opacity_share, mass_share: the same and the H I mass per dex over their "
-        "totals between the first and the last pivot."
+        "totals between the first and the last pivot; cumulative: what is below a column."
     )
 
     def keys(self, draws: Draws) -> Mapping[str, tuple[Array, str, str]]:
@@ -52,6 +53,14 @@ class OpacityBudgetTable:
                 "",
                 "share of the opacity at 912 A per dex of column",
             ),
+            "opacity_cumulative": Curve(
+                cumulative(draws, absorbed_share), "", "share of the opacity up to that column"
+            ),
+            "mass_cumulative": Curve(
+                cumulative(draws, lambda column: 10.0**column),
+                "",
+                "share of the H I mass up to that column",
+            ),
             "mass_share": Curve(
                 per_dex * mass / _totals(draws, lambda column: 10.0**column),
                 "",
@@ -63,6 +72,21 @@ class OpacityBudgetTable:
 def absorbed_share(log_nhi: Array) -> Array:
     """Return 1 − exp(−N σ_912), the share of photons at 912 Å that an absorber takes out."""
     return np.asarray(-np.expm1(-(10.0**log_nhi) * photoionization_cross_section(1.0)))
+
+
+def cumulative(draws: Draws, kernel: Callable[[Array], Array]) -> Array:
+    """Return the share of ∫ f K dN that lies below every column, shape (n_draws, n_rows)."""
+    grid = draws.column_grid()
+    kinks = draws.setting.distribution.kinks
+    pieces = [column_nodes(lo, hi, kinks) for lo, hi in pairwise(grid)]
+    log_nhi, d_nhi = (np.concatenate(part) for part in zip(*pieces, strict=True))
+    starts = np.cumsum([0, *(len(nodes) for nodes, _ in pieces[:-1])])
+    weights = kernel(log_nhi) * d_nhi
+    shares = []
+    for z in draws.derive.column_redshifts:
+        below = np.cumsum(np.add.reduceat(draws.f(log_nhi, z) * weights, starts, axis=1), axis=1)
+        shares.append(np.pad(below, ((0, 0), (1, 0))) / below[:, -1:])
+    return np.concatenate(shares, axis=1)
 
 
 def _totals(draws: Draws, kernel: Callable[[Array], Array]) -> Array:

@@ -12,13 +12,17 @@ from fogline.figures import (
     column_distribution,
     convergence,
     corner_plot,
+    depth_path,
+    escape_correction,
     hi_density,
+    ionizing_background,
     lls_incidence,
     lya_opacity,
     mean_free_path,
     opacity_budget,
     prior_posterior,
     pulls,
+    transmission,
 )
 from fogline.figures.comparison import draw_comparison
 from fogline.figures.inputs import FigureInputs
@@ -32,6 +36,10 @@ FIGURES: Final[dict[str, Callable[[FigureInputs], Figure]]] = {
     "mean_free_path": mean_free_path.draw,
     "hi_density": hi_density.draw,
     "opacity_budget": opacity_budget.draw,
+    "transmission": transmission.draw,
+    "escape_correction": escape_correction.draw,
+    "depth_path": depth_path.draw,
+    "ionizing_background": ionizing_background.draw,
     "corner": corner_plot.draw,
     "pulls": pulls.draw,
     "convergence": convergence.draw,

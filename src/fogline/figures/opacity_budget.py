@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 from matplotlib.figure import Figure
 
 from fogline.figures.axis import (
@@ -29,16 +31,20 @@ def draw(inputs: FigureInputs) -> Figure:
     """
     reference = inputs.fit.setting.distribution.reference_redshift
     rows = rows_at(inputs.tables["opacity_budget"], reference)
-    figure = new_figure(inputs, ONE_COLUMN, 2.8)
-    axes = figure.subplots()
-    shade_unmeasured(axes, inputs)
+    figure = new_figure(inputs, ONE_COLUMN, 4.0)
+    axes, lower = figure.subplots(2, sharex=True, height_ratios=[1.5, 1.0])
     for name, label, colour, line in (
-        ("opacity_share", "opacity at 912 Å", MODEL, "-"),
-        ("mass_share", r"H$\,$I mass", SECOND_MODEL, "--"),
+        ("opacity", "opacity at 912 Å", MODEL, "-"),
+        ("mass", r"H$\,$I mass", SECOND_MODEL, "--"),
     ):
-        band = table_band(rows, "log_nhi", name)
-        draw_band(axes, band, colour=colour, line=line, label=label, outer="none")
-    column_axis(axes, inputs)
+        look: dict[str, Any] = {"colour": colour, "line": line, "label": label, "outer": "none"}
+        draw_band(axes, table_band(rows, "log_nhi", f"{name}_share"), **look)
+        draw_band(lower, table_band(rows, "log_nhi", f"{name}_cumulative"), **look)
+    for panel in (axes, lower):
+        shade_unmeasured(panel, inputs)
+    column_axis(lower, inputs)
+    lower.set_ylim(0.0, 1.0)
+    lower.set_ylabel("share below")
     axes.set_ylim(0.0, 1.12 * axes.get_ylim()[1])
     axes.set_ylabel("share per dex of column [dex$^{-1}$]")
     mark_classes(axes)
