@@ -37,6 +37,7 @@ rule all:
             analysis=ANALYSES,
             figure=FIGURES,
         ),
+        expand("results/{analysis}/exports/{export}", analysis=ANALYSES, export=EXPORTS),
         COMPARISON,
     localrule: True
 

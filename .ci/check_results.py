@@ -4,7 +4,7 @@ import json
 import sys
 from pathlib import Path
 
-from fogline.plan import DERIVED, FIGURES
+from fogline.plan import DERIVED, EXPORTS, FIGURES
 
 faults = []
 analyses = sorted(p.parent for p in Path("results").glob("*/convergence.json"))
@@ -16,6 +16,7 @@ for folder in analyses:
     ]
     tables = ("parameters", *DERIVED, "predictive")
     expected += [folder / "tables" / f"{name}.ecsv" for name in tables]
+    expected += [folder / "exports" / name for name in EXPORTS]
     expected.append(folder / "posterior.nc")
     faults += [f"missing or empty: {p}" for p in expected if not (p.exists() and p.stat().st_size)]
 if len(analyses) < 3:

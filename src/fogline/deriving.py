@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from fogline.combining import replicate_rng
 from fogline.datasets import DataSet
 from fogline.derived import Draws, write_derived
+from fogline.exports import write_exports
 from fogline.filters import read_filters
 from fogline.posterior_file import read_draws
 from fogline.predictive import check_predictive, predictive_table
@@ -18,7 +19,7 @@ from fogline.quantities import Setting
 from fogline.response_file import Fit
 from fogline.settings import AnalysisSettings
 from fogline.side_tables import read_side_table
-from fogline.tables import write_table
+from fogline.tables import read_table, write_table
 
 Array = NDArray[np.float64]
 
@@ -71,6 +72,24 @@ def highest_column(datasets: Sequence[DataSet]) -> float | None:
     """Return the upper end of the columns that data sets counted in bins; None without such."""
     ends = [data.log_nhi_hi.max() for data in datasets if data.quantity == "column_distribution"]
     return float(max(ends)) if ends else None
+
+
+def export_results(
+    fit: Fit, *, posterior: str | Path, parameters: str | Path, directory: str | Path
+) -> None:
+    """Write the files of an analysis that other programs read.
+
+    Parameters
+    ----------
+    fit : Fit
+    posterior, parameters : path-like
+        Posterior file, and table of parameters.
+    directory : path-like
+        Folder of the exports.
+    """
+    theta = read_draws(posterior, fit.analysis.derive.draws)
+    draws = make_draws(theta, fit.setting, fit.analysis)
+    write_exports(draws, read_table(parameters), directory, fit.table_meta())
 
 
 def write_predictive(fit: Fit, posterior: str | Path, table: str | Path) -> None:

@@ -32,6 +32,15 @@ DERIVED: Final = (
 )
 """Names of the derived tables, in the order of `fogline.derived.DERIVED_TABLES`."""
 
+EXPORTS: Final = (
+    "column_distribution_samples.ecsv",
+    "column_distribution_samples.fits",
+    "transmission.ecsv",
+    "opacity_grid.ecsv",
+    "parameters.tex",
+)
+"""Files that `fogline.exports` writes."""
+
 FIGURES: Final = (
     "column_distribution",
     "lya_opacity",

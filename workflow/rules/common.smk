@@ -3,7 +3,7 @@
 import os
 import sys
 
-from fogline.plan import DERIVED, FIGURES, closing_words, read_study
+from fogline.plan import DERIVED, EXPORTS, FIGURES, closing_words, read_study
 from fogline.faults import InputError
 from fogline.linked_files import linked_files
 from fogline.provenance import code_hash, settings_hash

@@ -33,3 +33,23 @@ rule check_predictive:
         code=code_hash("fogline.deriving"),
     script:
         "../scripts/check_predictive.py"
+
+
+rule export_results:
+    input:
+        response="results/{analysis}/response.h5",
+        posterior="results/{analysis}/posterior.nc",
+        parameters="results/{analysis}/tables/parameters.ecsv",
+        sides=lambda wildcards: analysis_of(wildcards).derive.side_files,
+    output:
+        expand("results/{{analysis}}/exports/{export}", export=EXPORTS),
+    log:
+        "logs/export_results/{analysis}.log",
+    resources:
+        mem_mb=1500,
+        runtime=20,
+    params:
+        derive=lambda wildcards: settings_hash(analysis_of(wildcards).derive),
+        code=code_hash("fogline.deriving"),
+    script:
+        "../scripts/export_results.py"
