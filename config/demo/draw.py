@@ -313,8 +313,49 @@ def main(directory: str | Path = Path(__file__).parent) -> None:
         if survey.correlation is not None:
             write(_correlation_table(survey), directory, survey.meta["covariance"])
 
+    path, absorbers = damped_list(np.random.default_rng(np.random.SeedSequence(SEED + 1)))
+    write(path, directory, "paths/dla_sightlines.ecsv")
+    write(absorbers, directory, "dla_list.ecsv")
     write(filter_curve(), directory, "filters/saltmarsh_u.ecsv")
     write(background(), directory, "background/photoionization_rate.ecsv")
+
+
+def damped_list(rng: np.random.Generator) -> tuple[Table, Table]:
+    """Return the path and the absorbers of a survey of single damped systems at z > 3.3.
+
+    True columns are drawn from the truth above 10^19.6, get errors, and are kept where the
+    *measured* column is that of a damped system: weak ones scatter in, strong ones out.
+    """
+    n_sightlines = 700
+    z_start = rng.uniform(3.3, 3.9, n_sightlines)
+    z_end = z_start + rng.uniform(0.2, 0.7, n_sightlines)
+    theta = np.array(TRUTH["log_f"] + TRUTH["evolution"])
+    log_edges, z_edges = np.linspace(19.6, 22.5, 581), np.linspace(3.3, 4.6, 131)
+    log_nhi, z = (0.5 * (edges[1:] + edges[:-1]) for edges in (log_edges, z_edges))
+    f = 10.0 ** np.array([DISTRIBUTION.log_f(theta, log_nhi, x) for x in z])
+    per_z = f * np.diff(10.0**log_edges) * SETTING.cosmology.dx_dz(z)[:, None]
+    covered = ((z[:, None] > z_start) & (z[:, None] < z_end)).sum(axis=1)
+    expected = per_z * covered[:, None] * (z_edges[1] - z_edges[0])
+    n_drawn = rng.poisson(expected.sum())
+    cell = np.searchsorted(np.cumsum(expected) / expected.sum(), rng.random(n_drawn))
+    jitter = rng.random((2, n_drawn)) - 0.5
+    true = log_nhi[cell % len(log_nhi)] + jitter[0] * (log_edges[1] - log_edges[0])
+    redshift = z[cell // len(log_nhi)] + jitter[1] * (z_edges[1] - z_edges[0])
+    error = np.where(rng.random(n_drawn) < 0.7, 0.10, 0.15)
+    measured = np.round(true + error * rng.standard_normal(n_drawn), 2)
+    kept = np.flatnonzero(measured >= 20.3)
+    kept = kept[np.argsort(redshift[kept])]
+    path = Table({"z_start": np.round(z_start, 4), "z_end": np.round(z_end, 4)})
+    path.meta = {"kind": "sightlines", "source": "Saltmarsh programme, invented"}
+    absorbers = Table({"z": np.round(redshift, 4), "log_nhi": measured, "err": error})[kept]
+    absorbers.meta = {
+        "quantity": "absorber_list",
+        "source": "Saltmarsh programme, an invented survey (config/demo/draw.py)",
+        "note": "Damped absorbers one by one, at redshifts above those of dla_columns.",
+        "survey_path": "paths/dla_sightlines.ecsv",
+        "log_nhi_min": 20.3,
+    }
+    return path, absorbers
 
 
 def filter_curve() -> Table:

@@ -17,6 +17,7 @@ from typing import Any, Final
 import numpy as np
 from numpy.typing import NDArray
 
+from fogline.absorber_files import process_arrays
 from fogline.cosmology import Cosmology
 from fogline.covariance_files import read_covariance
 from fogline.datasets import DataSet
@@ -143,8 +144,13 @@ def _validate(raw: RawTable, faults: list[Fault]) -> DataSet | None:
     table = read_table(raw, faults)
     if table is None:
         return None
-    arrays = check_rows(Rows(raw, table, faults), spec, value, counts, meta)
-    covariance, linked = _covariance(raw, meta, unit, arrays, faults)
+    rows = Rows(raw, table, faults)
+    arrays = check_rows(rows, spec, value, counts, meta)
+    if spec.absorbers:
+        made = {} if faults else process_arrays(raw, rows, arrays, meta, faults)
+    else:
+        covariance, linked = _covariance(raw, meta, unit, arrays, faults)
+        made = {**arrays, "covariance": covariance, "linked": linked}
     if faults:
         return None
     return DataSet(
@@ -155,10 +161,8 @@ def _validate(raw: RawTable, faults: list[Fault]) -> DataSet | None:
         unit=unit,
         counts=counts,
         cosmology=_cosmology(raw.meta.get("cosmology")),
-        logarithmic=value is not None and value.logarithmic and not counts,
-        covariance=covariance,
-        linked=linked,
-        **arrays,
+        logarithmic=value is not None and value.logarithmic and not (counts or spec.absorbers),
+        **made,
     )
 
 

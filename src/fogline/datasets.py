@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -12,6 +12,10 @@ from numpy.typing import ArrayLike, NDArray
 from fogline.cosmology import Cosmology
 
 Array = NDArray[np.float64]
+
+MEASURED, INTENSITY, EXPOSURE, SHOWN = range(4)
+"""Roles of rows: a measurement or count; a cell of a list of absorbers, with their number in it;
+the expected number of that list; a count that is shown but not fitted."""
 
 
 @dataclass(frozen=True)
@@ -56,6 +60,10 @@ class DataSet:
         Of the errors, where the file names one; its diagonal agrees with the errors.
     wavelength_lo, wavelength_hi : ndarray, shape (n_rows,) [Angstrom], or None
         Rest wavelengths of the rows, equal where a row is at a single one.
+    role : ndarray of int, shape (n_rows,), or None
+        What each row is; all are `MEASURED` where None.
+    extras : mapping of str to ndarray
+        What a quantity needs beside rows.
     linked : tuple of str
         Files that were read with it, such as its covariance.
     """
@@ -82,7 +90,21 @@ class DataSet:
     covariance: Array | None = None
     wavelength_lo: Array | None = None
     wavelength_hi: Array | None = None
+    role: NDArray[np.int64] | None = None
+    extras: Mapping[str, Array] = field(default_factory=dict)
     linked: tuple[str, ...] = ()
+
+    @property
+    def visible(self) -> NDArray[np.bool_]:
+        """Rows that stand for a measurement or count of their own, shape (n_rows,)."""
+        if self.role is None:
+            return np.ones(self.n_rows, dtype=bool)
+        return (self.role == MEASURED) | (self.role == SHOWN)
+
+    @property
+    def n_listed(self) -> int:
+        """Number of rows, or absorbers, in the file."""
+        return int(self.extras["n_absorbers"]) if "n_absorbers" in self.extras else self.n_rows
 
     @property
     def n_rows(self) -> int:

@@ -4,13 +4,20 @@ from __future__ import annotations
 
 import csv
 import re
+from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Final
+from typing import Any, Final
+
+import numpy as np
+from numpy.typing import NDArray
 
 from fogline.faults import Fault
 
 _INTEGER: Final = re.compile(r"[+-]?\d{1,18}")
 _FLOAT: Final = re.compile(r"[+-]?((\d+\.?\d*|\.\d+)([eE][+-]?\d{1,3})?|inf|nan)", re.IGNORECASE)
+
+MANY: Final = 5000
+"""Rows from which on a file of numbers is read at once."""
 
 FLOATS: Final = ("float16", "float32", "float64")
 INTEGERS: Final = ("int8", "int16", "int32", "int64", "uint8", "uint16", "uint32", "uint64")
@@ -103,6 +110,65 @@ def read_rows(
         if not found:
             rows.append(RawRow(line, text, tuple(cells)))
     return tuple(rows)
+
+
+class ManyRows(Sequence[RawRow]):
+    """Rows of a long file, split into cells only where somebody asks for one.
+
+    Parameters
+    ----------
+    body : list of (int, str)
+        Line and text of each row, all of them good.
+    delimiter : str
+        Between the cells.
+    """
+
+    def __init__(self, body: list[tuple[int, str]], delimiter: str) -> None:
+        self._body = body
+        self._delimiter = delimiter
+
+    def __len__(self) -> int:
+        return len(self._body)
+
+    def __getitem__(self, index: Any) -> Any:
+        if isinstance(index, slice):
+            return [self[i] for i in range(*index.indices(len(self)))]
+        line, text = self._body[index]
+        return RawRow(line, text, tuple(split_cells(text, self._delimiter)))
+
+    @property
+    def lines(self) -> tuple[int, ...]:
+        """Line of each row."""
+        return tuple(line for line, _ in self._body)
+
+
+def read_numbers(
+    columns: tuple[RawColumn, ...], body: list[tuple[int, str]], delimiter: str
+) -> NDArray[np.float64] | None:
+    """Return the rows of a long file of numbers, read at once.
+
+    Parameters
+    ----------
+    columns : tuple of RawColumn
+    body : list of (int, str)
+        Line and text of each row.
+    delimiter : str
+
+    Returns
+    -------
+    ndarray, shape (n_rows, n_columns), or None
+        None where the file is short, has columns of text, or has any row that is not simply
+        numbers: then rows have to be looked at one by one.
+    """
+    if len(body) < MANY or not all(column.numeric for column in columns):
+        return None
+    try:
+        numbers = np.loadtxt(
+            [text for _, text in body], delimiter=None if delimiter == " " else delimiter, ndmin=2
+        )
+    except ValueError:
+        return None
+    return numbers if numbers.shape == (len(body), len(columns)) else None
 
 
 def _row_faults(columns: tuple[RawColumn, ...], cells: list[str]) -> list[str]:

@@ -11,16 +11,27 @@ from __future__ import annotations
 import re
 import textwrap
 import warnings
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Final
 
+import numpy as np
 from astropy import units
 from astropy.cosmology import units as cosmology_units
 from astropy.io import ascii as astropy_ascii
 from astropy.table import Table
+from numpy.typing import NDArray
 
-from fogline.ecsv_cells import FLOATS, INTEGERS, RawColumn, RawRow, read_rows, split_cells
+from fogline.ecsv_cells import (
+    FLOATS,
+    INTEGERS,
+    ManyRows,
+    RawColumn,
+    RawRow,
+    read_numbers,
+    read_rows,
+    split_cells,
+)
 from fogline.faults import Fault, nearest
 from fogline.yaml_lines import Document, parse_yaml
 
@@ -49,15 +60,25 @@ class RawTable:
         Rows that cannot; a fault says why.
     head : tuple of str
         Lines of the header and the column names.
+    numbers : ndarray, shape (n_rows, n_columns), or None
+        All rows at once, of a long file of numbers.
     """
 
     path: str
     header: Document
     columns: tuple[RawColumn, ...]
     names_line: int
-    rows: tuple[RawRow, ...]
+    rows: Sequence[RawRow]
     n_left_out: int
     head: tuple[str, ...]
+    numbers: NDArray[np.float64] | None = None
+
+    @property
+    def lines(self) -> tuple[int, ...]:
+        """Line of each row."""
+        if isinstance(self.rows, ManyRows):
+            return self.rows.lines
+        return tuple(row.line for row in self.rows)
 
     @property
     def meta(self) -> Any:
@@ -108,10 +129,15 @@ def split_ecsv(path: str, text: str, faults: list[Fault]) -> RawTable | None:
         faults.append(
             Fault(path, body[0][0], "no rows below the column names; must be at least one")
         )
-    rows = read_rows(path, columns, body[1:], delimiter, faults)
+    numbers = read_numbers(columns, body[1:], delimiter)
+    rows: Sequence[RawRow]
+    if numbers is None:
+        rows = read_rows(path, columns, body[1:], delimiter, faults)
+    else:
+        rows = ManyRows(body[1:], delimiter)
     head = tuple([line for line in lines[:n_header] if line.strip()] + [body[0][1]])
     left_out = len(body) - 1 - len(rows)
-    return RawTable(path, header, columns, body[0][0], rows, left_out, head)
+    return RawTable(path, header, columns, body[0][0], rows, left_out, head, numbers)
 
 
 def read_table(raw: RawTable, faults: list[Fault]) -> Table | None:
@@ -132,6 +158,8 @@ def read_table(raw: RawTable, faults: list[Fault]) -> Table | None:
     # Serialized columns would make others than those that stand there.
     if not raw.rows or "__serialized_columns__" in (raw.meta or {}):
         return None
+    if raw.numbers is not None:
+        return Table({c.name: raw.numbers[:, i] for i, c in enumerate(raw.columns)}, copy=False)
     lines = [*raw.head, *(row.text for row in raw.rows)]
     try:
         with warnings.catch_warnings(), units.add_enabled_units(cosmology_units):

@@ -17,6 +17,9 @@ from fogline.quantities.spec import LOG_NHI_RANGE, FileSpec, ValueColumn, interv
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
+MOST_FAULTS: Final = 100
+"""Rows of one column that are reported one by one."""
+
 HIGHEST_REDSHIFT: Final = 20.0
 LIMITS: Final[Mapping[str, int]] = {"": 0, "upper": 1, "lower": -1}
 
@@ -47,7 +50,7 @@ class Rows:
     @property
     def lines(self) -> tuple[int, ...]:
         """Line of each row."""
-        return tuple(row.line for row in self._raw.rows)
+        return self._raw.lines
 
     def has(self, name: str) -> bool:
         """Return whether the file has a column."""
@@ -82,12 +85,17 @@ class Rows:
         must : str or callable
             What is allowed; of the row where it depends on it.
         """
-        for row in map(int, np.flatnonzero(bad)):
+        rows = np.flatnonzero(bad)
+        lines = self.lines if len(rows) else ()
+        for row in map(int, rows[:MOST_FAULTS]):
             found = self.cell(name, row)
             found = f"is {found}" if found else "is empty"
             allowed = must if isinstance(must, str) else must(row)
             what = f"{name} {found}, must be {allowed}"
-            self._faults.append(Fault(self._raw.path, self.lines[row], what))
+            self._faults.append(Fault(self._raw.path, lines[row], what))
+        if len(rows) > MOST_FAULTS:
+            what = f"{name}: {len(rows) - MOST_FAULTS} more rows are wrong in the same way"
+            self._faults.append(Fault(self._raw.path, lines[int(rows[MOST_FAULTS])], what))
 
     def between(
         self,
@@ -236,6 +244,7 @@ def _check_values(rows: Rows, value: ValueColumn | None, meta: Mapping[str, Any]
     # A limit without an error is taken as sharp as its confidence says, which needs a linear
     # scale with a zero: in logarithms the width must be given.
     free = value is None or not (value.logarithmic or meta.get("likelihood") == "lognormal")
+    free = free or (value is not None and value.bare_limits)
     may_lack = (limit != 0) & free
     err_lo, err_hi = _check_errors(rows, name, may_lack)
     return {

@@ -16,7 +16,7 @@ from fogline.faults import Fault
 from fogline.file_columns import WAVELENGTHS
 from fogline.quantities.spec import ValueColumn
 
-_MEASURED: Final = ("value", "log_f", "err", "err_lo", "err_hi")
+_MEASURED: Final = ("value", "log_f", "log_nhi", "err", "err_lo", "err_hi")
 _PLAIN_UNITS: Final[Mapping[str, tuple[str, ...]]] = {
     "z": ("redshift",),
     "z_lo": ("redshift",),

@@ -13,7 +13,7 @@ from typing import Any, Final
 
 import yaml
 
-LINKS: Final = ("covariance",)
+LINKS: Final = ("covariance", "survey_path", "completeness")
 """Meta keys whose value is a file, relative to the folder of the constraint file."""
 
 

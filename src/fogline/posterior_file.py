@@ -101,10 +101,13 @@ def _row_groups(fit: Fit, theta: Array, rng: np.random.Generator) -> dict[str, d
         "observed_data": {},
     }
     for data, rows in zip(fit.response.datasets, fit.response.slices, strict=True):
-        shape = (*theta.shape[:2], data.n_rows)
-        groups["log_likelihood"][data.name] = ln_rows[:, rows].reshape(shape).astype(np.float32)
-        groups["posterior_predictive"][data.name] = drawn[:, rows].reshape(shape).astype(np.float32)
-        groups["observed_data"][data.name] = data.observed
+        ln_p, replicates = ln_rows[:, rows], drawn[:, rows][:, data.visible]
+        if data.role is not None:  # a list of absorbers has one likelihood, not one a row
+            ln_p = ln_p.sum(axis=1, keepdims=True)
+        shape = (*theta.shape[:2], -1)
+        groups["log_likelihood"][data.name] = ln_p.reshape(shape).astype(np.float32)
+        groups["posterior_predictive"][data.name] = replicates.reshape(shape).astype(np.float32)
+        groups["observed_data"][data.name] = data.observed[data.visible]
     return groups
 
 

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from fogline.datasets import DataSet
 from fogline.derived import write_derived
 from fogline.deriving import make_draws
-from fogline.predictive import row_table
+from fogline.predictive import row_table, visible_rows
 from fogline.response_file import build_fit, setting_of
 from fogline.settings import AnalysisSettings
 
@@ -38,6 +38,7 @@ def predict_table(analysis: AnalysisSettings, datasets: list[DataSet], point: Ar
     predicted = fit.response.predict(point[None])
     nuisances = point[None, fit.response.n_parameters :]
     table["predicted"] = fit.posterior.likelihood.scaled(predicted, nuisances)[0]
+    table = table[visible_rows(datasets)]
     table.meta["ln_likelihood"] = float(fit.posterior.ln_likelihood(point[None])[0])
     table.meta.update(fit.table_meta())
     return table

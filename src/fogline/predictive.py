@@ -14,6 +14,7 @@ towards 0.5: a small one is serious, an inconspicuous one is weak evidence (Gelm
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -81,7 +82,7 @@ def check_predictive(response: Response, theta: Array, rng: np.random.Generator)
         p_values=_row_p_values(likelihood, drawn),
         dataset_p_values=tuple(
             _discrepancy_p_value(squares[0][:, rows].sum(axis=1), squares[1][:, rows].sum(axis=1))
-            for rows in response.slices
+            for rows in response.slices  # rows of a process that are not shown have no pulls
         ),
     )
 
@@ -121,7 +122,7 @@ def predictive_table(datasets: tuple[DataSet, ...], check: PredictiveCheck) -> T
         f"sided for measurements and counts, one-sided for limits; flagged below {ROW_FLAG}."
     )
     table.meta["datasets"] = dataset_summary(datasets, check)
-    return table
+    return table[visible_rows(datasets)]
 
 
 def dataset_summary(
@@ -136,11 +137,16 @@ def dataset_summary(
     return summary
 
 
+def visible_rows(datasets: Sequence[DataSet]) -> NDArray[np.bool_]:
+    """Return which rows of data sets stand for a measurement or count of their own."""
+    return np.concatenate([data.visible for data in datasets])
+
+
 def row_table(datasets: tuple[DataSet, ...]) -> Table:
     """Return data set, row, quantity, redshift and observed value of every row."""
     table = Table()
     table["dataset"] = [data.name for data in datasets for _ in range(data.n_rows)]
-    table["row"] = np.concatenate([np.arange(data.n_rows) for data in datasets])
+    table["row"] = np.concatenate([np.cumsum(data.visible) - 1 for data in datasets])
     table["quantity"] = [data.quantity for data in datasets for _ in range(data.n_rows)]
     table["z"] = np.concatenate([data.z for data in datasets])
     table["observed"] = np.concatenate([data.observed for data in datasets])

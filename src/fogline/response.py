@@ -15,6 +15,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -123,10 +124,28 @@ def raw_predictions(setting: Setting, block: Block, theta: Array) -> Array:
     return mixed(np.concatenate(raw), block, mix)
 
 
-def _raw(distribution: ColumnDistribution, expanded: Array, points: Points, block: Block) -> Array:
+def _raw(distribution: ColumnDistribution, expanded: Array, points: Points, block: Block) -> Any:
     f = distribution.ln_f(expanded, points)
     np.exp(f, out=f)
-    return np.asarray(f @ block.weights)
+    return segmented(f, block.weights, block.segments)
+
+
+def segmented(f: Any, weights: Any, segments: tuple[tuple[slice, slice], ...]) -> Any:
+    """Return ``f @ weights`` from the parts of the weights that are not zero.
+
+    Parameters
+    ----------
+    f : ndarray, shape (n, n_points)
+    weights : ndarray, shape (n_points, n_raw)
+    segments : tuple of (slice, slice)
+        From `Block.segments`.
+    """
+    if len(segments) == 1:
+        return f @ weights
+    raw = np.zeros((len(f), weights.shape[1]), dtype=f.dtype)
+    for points, columns in segments:
+        raw[:, columns] += f[:, points] @ weights[points, columns]
+    return raw
 
 
 def doppler_mix(

@@ -41,7 +41,7 @@ ARRAYS = (
 )
 """Fields of `DataSet` that are arrays over rows."""
 
-OPTIONAL_ARRAYS = ("covariance", "wavelength_lo", "wavelength_hi")
+OPTIONAL_ARRAYS = ("covariance", "wavelength_lo", "wavelength_hi", "role")
 """Fields of `DataSet` that are arrays or None."""
 
 
@@ -136,7 +136,8 @@ def _write(fit: Fit, path: Path) -> None:
         ):
             group = file.create_group(f"datasets/{i:03d}")
             arrays = (*ARRAYS, *OPTIONAL_ARRAYS)
-            scalars = {f.name: getattr(data, f.name) for f in fields(data) if f.name not in arrays}
+            others = [f.name for f in fields(data) if f.name not in (*arrays, "extras")]
+            scalars = {name: getattr(data, name) for name in others}
             scalars["cosmology"] = _plain_cosmology(data.cosmology)
             group.attrs["dataset"] = to_json(scalars)
             for name in arrays:
@@ -145,6 +146,8 @@ def _write(fit: Fit, path: Path) -> None:
             for name in ("log_nhi", "z", "weights"):
                 group[f"block/{name}"] = getattr(block, name)
             group["block"].attrs["n_doppler"] = block.n_doppler
+            for name, values in data.extras.items():
+                group[f"extras/{name}"] = values
             for name, values in block.constants.items():
                 group[f"constants/{name}"] = values
 
@@ -185,7 +188,10 @@ def _read_dataset(group: h5py.Group) -> DataSet:
         scalars[name] = tuple(scalars[name])
     present = [name for name in (*ARRAYS, *OPTIONAL_ARRAYS) if name in group["rows"]]
     rows = {name: group[f"rows/{name}"][()] for name in present}
-    return DataSet(**scalars, **rows, cosmology=Cosmology(**cosmology) if cosmology else None)
+    extras = {name: values[()] for name, values in group.get("extras", {}).items()}
+    return DataSet(
+        **scalars, **rows, extras=extras, cosmology=Cosmology(**cosmology) if cosmology else None
+    )
 
 
 def _read_block(group: h5py.Group) -> Block:

@@ -95,6 +95,36 @@ SIDE_TABLES: Final[dict[str, SideTable]] = {
             increasing="wavelength",
         ),
         SideTable(
+            "sightlines",
+            "Survey path: the redshifts that every sightline covers.",
+            (
+                SideColumn("z_start", "lower end", (2.1, 2.3, 2.0), maximum=20.0),
+                SideColumn("z_end", "upper end", (2.9, 3.4, 3.1), maximum=20.0),
+                SideColumn("sightline", "its number, as in the list", (1.0, 2.0), optional=True),
+            ),
+            ordered=("z_start", "z_end"),
+        ),
+        SideTable(
+            "sensitivity",
+            "Survey path: how many sightlines cover a redshift, linear between rows.",
+            (
+                SideColumn("z", "redshift", (2.0, 2.4, 3.0, 3.5), maximum=20.0),
+                SideColumn("g", "number of sightlines", (0.0, 120.0, 90.0, 0.0)),
+            ),
+            increasing="z",
+        ),
+        SideTable(
+            "completeness",
+            "Completeness of a list of absorbers against true column density, linear between rows.",
+            (
+                SideColumn(
+                    "log_nhi", "log10(N / cm^-2)", (20.0, 20.3, 20.6), minimum=8.0, maximum=26.0
+                ),
+                SideColumn("completeness", "found share", (0.6, 0.9, 1.0), maximum=1.0),
+            ),
+            increasing="log_nhi",
+        ),
+        SideTable(
             "photoionization_rate",
             "Photoionization rate of H I by the ionizing background.",
             (

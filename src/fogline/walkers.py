@@ -24,13 +24,16 @@ from numpy.typing import NDArray
 
 from fogline.distribution import LN10
 from fogline.quantities import QUANTITIES
-from fogline.response import Response, mixed
+from fogline.response import Response, mixed, segmented
 
 Array = NDArray[np.float64]
 Single = NDArray[np.float32]
 
 LARGEST_LN_RATIO = 80.0
 """ln(f/f_0) above which single precision overflows (at 88.7)."""
+
+NEGLIGIBLE = 1e-25
+"""Weights over the largest of their prediction that are nothing."""
 
 LEAST_LN_RATIO = -200.0
 """ln(f/f_0) of a form of high columns below which nothing is left, however far it falls."""
@@ -64,7 +67,10 @@ class WalkerResponse:
             weights = np.exp(ln_f)[:, None] * block.weights
             scale = np.abs(weights).max(axis=0)
             scale[scale == 0.0] = 1.0  # nothing absorbs there
-            single = points.basis.astype(np.float32), (weights / scale).astype(np.float32)
+            weights /= scale
+            # Numbers too small for single precision would slow every product down.
+            weights[np.abs(weights) < NEGLIGIBLE] = 0.0
+            single = points.basis.astype(np.float32), weights.astype(np.float32)
             blocks.append((*single, scale))
         return blocks
 
@@ -143,6 +149,7 @@ class WalkerResponse:
                 shape = response.distribution.ln_shape(expanded, points) - self._shapes[i]
                 ratio[:, points.high] += np.maximum(shape, LEAST_LN_RATIO)
             np.exp(ratio, out=ratio)
-            raw = mixed((ratio @ weights) * scale, block, mix)
+            raw = segmented(ratio, weights, block.segments)
+            raw = mixed(raw * scale, block, mix)
             parts.append(QUANTITIES[data.quantity].reduce(data, raw, block.constants))
         return np.concatenate(parts, axis=-1)

@@ -45,6 +45,7 @@ def test_demo_covers_every_quantity_and_its_forms(monkeypatch) -> None:
         "hi_density",
         "lyman_series_opacity",
         "continuum_flux",
+        "absorber_list",
     }
     assert any(data.counts for data in datasets)
     assert any((data.limit > 0).any() for data in datasets)

@@ -156,7 +156,7 @@ def _row(dataset: DataSet) -> tuple[str, ...]:
         source = f"{source[: _SOURCE_WIDTH - 1]}…"
     z = f"{low:g}" if low == high else f"{low:g} to {high:g}"
     columns = range_text(*column_ranges(dataset))
-    return dataset.name, dataset.quantity, str(dataset.n_rows), z, columns, source
+    return dataset.name, dataset.quantity, str(dataset.n_listed), z, columns, source
 
 
 def _listed(one: str, many: str, names: Sequence[str]) -> str:

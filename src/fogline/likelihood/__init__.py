@@ -30,9 +30,10 @@ from functools import cached_property
 
 import numpy as np
 
-from fogline.datasets import DataSet
+from fogline.datasets import EXPOSURE, INTENSITY, MEASURED, SHOWN, DataSet
 from fogline.likelihood.base import Array, Indices, Mask, Part, RowData
 from fogline.likelihood.correlated import CorrelatedRows
+from fogline.likelihood.process import ProcessRows, ShownRows
 from fogline.likelihood.rows import CountRows, LimitRows, NormalRows, StudentRows
 from fogline.nuisances import RowNuisances
 
@@ -177,15 +178,18 @@ def _parts(rows: RowData, datasets: Sequence[DataSet]) -> tuple[Part, ...]:
     """Return the parts that share out all rows."""
     correlated, taken = _correlated(rows, datasets)
     limited = rows.limit != 0
-    measured = ~rows.poisson & ~limited & ~taken
+    process = (rows.role == INTENSITY) | (rows.role == EXPOSURE)
+    measured = ~rows.poisson & ~limited & ~taken & ~process
     heavy = np.isfinite(rows.student_dof)
     kinds = (
         (NormalRows, measured & ~heavy),
         (StudentRows, measured & heavy),
-        (CountRows, rows.poisson),
+        (CountRows, rows.poisson & (rows.role == MEASURED)),
+        (ShownRows, rows.role == SHOWN),
+        (ProcessRows, process),
         (LimitRows, limited),
     )
-    single = [kind(rows, np.flatnonzero(mask)) for kind, mask in kinds if mask.any()]
+    single: list[Part] = [kind(rows, np.flatnonzero(mask)) for kind, mask in kinds if mask.any()]
     return (*single, *correlated)
 
 

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import ndtri
 
-from fogline.datasets import DataSet
+from fogline.datasets import SHOWN, DataSet
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
@@ -33,6 +33,8 @@ class RowData:
         +1 upper, -1 lower, 0 none.
     student_dof : ndarray, shape (n_rows,)
         Degrees of freedom of Student-t rows, infinite for normal ones.
+    role : ndarray of int, shape (n_rows,)
+        Roles of `fogline.datasets`.
     """
 
     observed: Array
@@ -42,6 +44,7 @@ class RowData:
     poisson: Mask
     limit: Indices
     student_dof: Array
+    role: Indices
 
     @classmethod
     def from_datasets(cls, datasets: Sequence[DataSet]) -> RowData:
@@ -95,6 +98,8 @@ class Part(Protocol):
 
 def _rows(data: DataSet) -> RowData:
     """Return the rows of one data set."""
+    if data.role is not None:
+        return _process_rows(data, data.role)
     poisson = np.full(data.n_rows, data.counts)
     log_normal = np.full(data.n_rows, data.meta.get("likelihood") == "lognormal") & ~poisson
     observed, lo, hi = data.observed.copy(), data.err_lo.copy(), data.err_hi.copy()
@@ -110,4 +115,14 @@ def _rows(data: DataSet) -> RowData:
         # The measurement behind the limit: L − z_C σ (upper), L + z_C σ (lower).
         observed = observed - data.limit * quantile * np.where(limited, hi, 0.0)
     dof = np.full(data.n_rows, float(data.meta.get("student_dof") or np.inf))
-    return RowData(observed, lo, hi, log_normal, poisson, data.limit, dof)
+    role = np.zeros(data.n_rows, dtype=np.int64)
+    return RowData(observed, lo, hi, log_normal, poisson, data.limit, dof, role)
+
+
+def _process_rows(data: DataSet, role: Indices) -> RowData:
+    """Return the rows of a list of absorbers, which have neither errors nor limits."""
+    shown = role == SHOWN
+    none = np.full(data.n_rows, np.nan)
+    no, zero = np.zeros_like(shown), np.zeros_like(role)
+    normal = np.full(data.n_rows, np.inf)
+    return RowData(data.observed, none, none, no, shown, zero, normal, role)

@@ -2,6 +2,7 @@
 
 from typing import Final
 
+from fogline.quantities.absorber_list import AbsorberList
 from fogline.quantities.base import Block, Quantity, Setting
 from fogline.quantities.column_distribution import ColumnDistributionBins
 from fogline.quantities.continuum_flux import ContinuumFlux
@@ -22,6 +23,7 @@ QUANTITIES: Final[dict[str, Quantity]] = {
         HiDensity(),
         LymanSeriesOpacity(),
         ContinuumFlux(),
+        AbsorberList(),
     )
 }
 """Every quantity by its name in constraint files."""

@@ -13,6 +13,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field, replace
 from functools import cached_property
+from itertools import pairwise
 from typing import Protocol
 
 import numpy as np
@@ -27,6 +28,11 @@ from fogline.quantities.spec import FileSpec
 from fogline.settings import Distribution
 
 Array = NDArray[np.float64]
+
+LARGE_BLOCK = 40_000
+"""Weights from which on zeros are worth being left out of the product."""
+
+MOST_PARTS = 60
 
 
 @dataclass(frozen=True)
@@ -80,6 +86,25 @@ class Block:
     weights: Array
     constants: Mapping[str, Array] = field(default_factory=dict)
     n_doppler: int = 1
+
+    @cached_property
+    def segments(self) -> tuple[tuple[slice, slice], ...]:
+        """Points, by redshift, and raw predictions of the parts of `weights` that are not zero.
+
+        A single part where the matrix is small or full: one product is then the fastest.
+        """
+        whole = ((slice(0, self.weights.shape[0]), slice(0, self.weights.shape[1])),)
+        if self.weights.size < LARGE_BLOCK:
+            return whole
+        ends = [0, *(np.flatnonzero(np.diff(self.z) != 0.0) + 1).tolist(), len(self.z)]
+        parts = []
+        for start, end in pairwise(ends):
+            used = np.flatnonzero((self.weights[start:end] != 0.0).any(axis=0))
+            columns = slice(int(used[0]), int(used[-1]) + 1) if len(used) else slice(0, 0)
+            parts.append((slice(start, end), columns))
+        area = sum((p.stop - p.start) * (r.stop - r.start) for p, r in parts)
+        worth = area < 0.5 * self.weights.size and len(parts) <= MOST_PARTS
+        return tuple(parts) if worth else whole
 
 
 class Quantity(Protocol):

@@ -161,6 +161,8 @@ class ValueColumn:
         Unit written into the template; empty where dimensionless.
     help : str
         What the numbers are, in a few words.
+    bare_limits : bool
+        Whether a limit may lack an error whatever the scale.
     """
 
     name: str = "value"
@@ -172,6 +174,7 @@ class ValueColumn:
     example_err: float = 0.1
     example_unit: str = ""
     help: str = "measured value"
+    bare_limits: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -197,6 +200,8 @@ class FileSpec:
         Whether rows carry ``log_nhi_lo`` and ``log_nhi_hi``.
     wavelengths : bool
         Whether rows carry ``wavelength``, or ``wavelength_lo`` and ``wavelength_hi``, at rest.
+    absorbers : bool
+        Whether rows are single absorbers, which may state their ``sightline``.
     cosmology_when : mapping of str to tuple of str, or None
         ``cosmology`` is required where all named meta keys have one of these values (an empty
         mapping: always); None: never required.
@@ -212,6 +217,7 @@ class FileSpec:
     counts: bool = False
     column_bins: bool = False
     wavelengths: bool = False
+    absorbers: bool = False
     cosmology_when: dict[str, tuple[str, ...]] | None = None
     exactly_one_of: tuple[tuple[str, ...], ...] = ()
 

@@ -1,0 +1,1 @@
+"""Absorbers as single points: survey paths, measurement errors, sufficient statistics."""

@@ -1,0 +1,116 @@
+"""Survey paths: what was searched, as a few weighted redshifts.
+
+A list's expected number is ∫ g(z) h(z) dz, g the number of sightlines that cover z and h smooth.
+With Chebyshev nodes z_m over the whole path, ∫ g h dz = Σ_m w_m h(z_m) exactly for polynomials h of
+their degree, whatever g is; the weights are found from the moments of g, once, for any number of
+sightlines.
+"""
+
+from __future__ import annotations
+
+from typing import Any, Final
+
+import numpy as np
+from numpy.polynomial import chebyshev
+from numpy.typing import NDArray
+
+Array = NDArray[np.float64]
+
+PATH_NODES: Final = 8
+"""Redshifts that stand for a path: over one survey f dX/dz is a polynomial of that degree."""
+
+
+def from_sightlines(z_start: Array, z_end: Array) -> tuple[Array, Array]:
+    """Return redshifts and weights of a path of single sightlines.
+
+    Parameters
+    ----------
+    z_start, z_end : ndarray, shape (n_sightlines,)
+
+    Returns
+    -------
+    z, weights : ndarray, shape (PATH_NODES,)
+        The weights add up to the whole path.
+    """
+    lo, hi = float(z_start.min()), float(z_end.max())
+    half, middle = 0.5 * (hi - lo), 0.5 * (hi + lo)
+    to_unit = [(z - middle) / half for z in (z_start, z_end)]
+    moments = []
+    for k in range(PATH_NODES):
+        integral = chebyshev.chebint(np.eye(PATH_NODES)[k])
+        start, end = (chebyshev.chebval(x, integral).sum() for x in to_unit)
+        moments.append(half * (end - start))
+    return _weights(lo, hi, np.array(moments))
+
+
+def from_sensitivity(z: Array, g: Array) -> tuple[Array, Array]:
+    """Return redshifts and weights of a tabulated number of sightlines, linear between rows.
+
+    Parameters
+    ----------
+    z, g : ndarray, shape (n_rows,)
+
+    Returns
+    -------
+    z, weights : ndarray, shape (PATH_NODES,)
+    """
+    nodes, weights = np.polynomial.legendre.leggauss(PATH_NODES)
+    half = 0.5 * np.diff(z)
+    at = z[:-1, None] + half[:, None] * (1.0 + nodes)
+    measure = half[:, None] * weights * np.interp(at, z, g)
+    lo, hi = float(z[0]), float(z[-1])
+    x = (2.0 * at - lo - hi) / (hi - lo)
+    moments = np.einsum("ij,ijk->k", measure, chebyshev.chebvander(x, PATH_NODES - 1))
+    return _weights(lo, hi, moments)
+
+
+def _weights(lo: float, hi: float, moments: Any) -> tuple[Array, Array]:
+    x = chebyshev.chebpts1(PATH_NODES)
+    weights = np.linalg.solve(chebyshev.chebvander(x, PATH_NODES - 1).T, moments)
+    weights = np.asarray(weights, dtype=float)
+    return 0.5 * (lo + hi) + 0.5 * (hi - lo) * x, weights
+
+
+def truncated(
+    z_start: Array, sightline: Array, absorber_z: Array, absorber_sightline: Array
+) -> Array:
+    """Return where sightlines end that end at their first absorber, counted from above.
+
+    The expected number on the path down to the absorber and the intensity at it are together the
+    likelihood of surviving to that redshift and being hit there: nothing is known of what is below.
+
+    Parameters
+    ----------
+    z_start, sightline : ndarray, shape (n_sightlines,)
+        Lower ends, and names (whole numbers).
+    absorber_z, absorber_sightline : ndarray, shape (n_absorbers,)
+        The absorbers that end a sightline.
+
+    Returns
+    -------
+    ndarray, shape (n_sightlines,)
+        Lower ends, raised to the highest such absorber.
+    """
+    ends = z_start.copy()
+    order = np.argsort(sightline)
+    where = order[np.searchsorted(sightline, absorber_sightline, sorter=order)]
+    np.maximum.at(ends, where, absorber_z)
+    return ends
+
+
+def coverage(z_start: Array, z_end: Array) -> tuple[Array, Array]:
+    """Return g(z) of sightlines at the redshifts where it changes.
+
+    Parameters
+    ----------
+    z_start, z_end : ndarray, shape (n_sightlines,)
+
+    Returns
+    -------
+    z, g : ndarray, shape (n_edges,)
+        g holds from a redshift to the next; the last is zero.
+    """
+    z = np.unique(np.concatenate([z_start, z_end]))
+    starts = np.searchsorted(np.sort(z_start), z, side="right")
+    ends = np.searchsorted(np.sort(z_end), z, side="right")
+    return z, (starts - ends).astype(float)
