@@ -85,6 +85,49 @@ LYMAN_SERIES: Final[tuple[LymanLine, ...]] = (
 LYMAN_ALPHA: Final = LYMAN_SERIES[0]
 
 
+def oscillator_strength(n: int) -> float:
+    """Return the exact absorption oscillator strength of the Lyman line 1 → n.
+
+    Parameters
+    ----------
+    n : int
+        2 or more.
+
+    References
+    ----------
+    Textbook closed form, f = 2^8 n^5 (n-1)^(2n-4) / [3 (n+1)^(2n+4)].
+    """
+    ln_f = 8.0 * np.log(2.0) + 5.0 * np.log(n) - np.log(3.0)
+    ln_f += (2 * n - 4) * np.log(n - 1.0) - (2 * n + 4) * np.log(n + 1.0)
+    return float(np.exp(ln_f))
+
+
+def lyman_series(n_max: int) -> tuple[LymanLine, ...]:
+    """Return the Lyman series up to an upper level.
+
+    Parameters
+    ----------
+    n_max : int
+
+    Returns
+    -------
+    tuple of LymanLine
+        Above n = 12 hydrogenic: λ = λ_limit / (1 - 1/n^2), exact oscillator strengths, and damping
+        constants that fall as n^-3 from that of n = 12.
+    """
+    last = LYMAN_SERIES[-1]
+    higher = [
+        LymanLine(
+            n,
+            LYMAN_LIMIT / (1.0 - 1.0 / n**2),
+            oscillator_strength(n),
+            last.gamma * (last.n / n) ** 3,
+        )
+        for n in range(last.n + 1, n_max + 1)
+    ]
+    return tuple(line for line in (*LYMAN_SERIES, *higher) if line.n <= n_max)
+
+
 def photoionization_cross_section(energy_ratio: ArrayLike) -> Array:
     """Return the exact cross-section of the hydrogen ground state.
 
