@@ -17,6 +17,7 @@ from fogline.atomic import (
     LYMAN_LIMIT,
     LYMAN_SERIES,
     SIGMA_912,
+    lyman_series,
     photoionization_cross_section,
 )
 
@@ -50,6 +51,41 @@ def test_oscillator_strengths_of_the_table():
     fixed_nucleus = oscillator_strength(N)
     assert np.all(table >= fixed_nucleus - 0.51 * digits)
     assert np.all(table <= fixed_nucleus * (1.0 + MASS_RATIO) + 0.51 * digits)
+
+
+def test_higher_lines_follow_the_closed_forms():
+    # Textbook closed form and Rydberg formula, status: derived. They continue the table: those of
+    # n = 12 differ from it by no more than its digits (f) and fine structure (2e-7 of λ).
+    higher = lyman_series(60)[len(LYMAN_SERIES) :]
+    assert [line.n for line in higher] == list(range(13, 61))
+    n = np.array([line.n for line in higher], dtype=float)
+    # Written for large n, where powers of n overflow: (1 - 1/n)^(2n-4) / (1 + 1/n)^(2n+4) / n^3.
+    f = 256.0 / 3.0 * (1.0 - 1.0 / n) ** (2 * n - 4) / (1.0 + 1.0 / n) ** (2 * n + 4) / n**3
+    assert_allclose([line.f for line in higher], f, rtol=1e-12)
+    assert_allclose([1e8 / line.wavelength for line in higher], LIMIT * (1 - 1 / n**2), rtol=5e-8)
+    last = LYMAN_SERIES[-1]
+    assert oscillator_strength(12.0) == pytest.approx(last.f, abs=5.1e-7)
+    assert LYMAN_LIMIT / (1.0 - 1.0 / 144.0) == pytest.approx(last.wavelength, rel=3e-7)
+
+
+@pytest.mark.parametrize("n", [13, 20, 40])
+def test_damping_constants_of_higher_lines(n):
+    # Scaled as n^-3 from n = 12, like the table above n = 6 the decay to the ground state alone.
+    # Its exact n-dependence is f (1 - 1/n^2)^2 (status: derived), within 1.5% of n^-3 here.
+    line = lyman_series(n)[-1]
+    exact = LYMAN_SERIES[-1].gamma * oscillator_strength(n) / oscillator_strength(12.0)
+    exact *= ((1.0 - 1.0 / n**2) / (1.0 - 1.0 / 144.0)) ** 2
+    assert line.gamma == pytest.approx(exact, rel=0.015)
+
+
+def test_series_passes_into_the_continuum():
+    # Continuity of oscillator strength per frequency across the limit (textbook, status: derived):
+    # π e²/(m_e c) f_n over the spacing of the lines, (ν_{n+1/2} - ν_{n-1/2}), tends to σ_912.
+    lines = lyman_series(200)
+    for n, tolerance in ((20, 8e-3), (60, 1e-3), (200, 3e-4)):
+        spacing = codata.c * LIMIT * 100.0 * (1.0 / (n - 0.5) ** 2 - 1.0 / (n + 0.5) ** 2)
+        mean = constants.LINE_AREA * lines[n - 2].f / spacing
+        assert mean == pytest.approx(SIGMA_912, rel=tolerance)
 
 
 def test_wavelengths_of_the_table():
