@@ -14,14 +14,23 @@ from typing import Any
 import numpy as np
 from scipy.interpolate import PchipInterpolator
 
-from fogline.atomic import LYMAN_ALPHA, log_nhi_at_tau, photoionization_cross_section
+from fogline.atomic import (
+    LYMAN_LIMIT,
+    LYMAN_SERIES,
+    log_nhi_at_tau,
+    photoionization_cross_section,
+)
 from fogline.cosmology import C_KM_S
 from fogline.datasets import DataSet
 from fogline.doppler import mean_equivalent_width
 from fogline.likelihood import Likelihood
+from fogline.line_blending import mean_blended_widths
+from fogline.quantities.absorber_list import completeness
 from fogline.quantities.hi_density import mass_per_moment
+from fogline.quantities.lyman_series_opacity import LINES, absorbing_lines
 from fogline.quantities.mean_free_path import length_unit
 from fogline.response_file import Fit
+from fogline.sightline_depth import WHOLE_SERIES
 
 N_COLUMNS = 1000
 N_PATH = 100
@@ -41,7 +50,9 @@ class Straightforward:
         self.model = fit.analysis.model
         self.cosmology = fit.setting.cosmology
         self.grid = np.linspace(self.model.pivots[0], self.model.pivots[-1], N_COLUMNS)
-        self.width = mean_equivalent_width(self.grid, self.model.doppler)
+        doppler = self.model.doppler
+        alone = [mean_equivalent_width(self.grid, doppler, j) / j.wavelength for j in LYMAN_SERIES]
+        self.widths = [*alone, *mean_blended_widths(self.grid, doppler)]
         self.likelihood = Likelihood.from_datasets(fit.response.datasets)
 
     def ln_likelihood(self, theta: np.ndarray) -> float:
@@ -82,13 +93,64 @@ class Straightforward:
         return lo, data.meta.get("log_nhi_max") or self.model.pivots[-1]
 
     def _lya_opacity(self, f: Callable[..., Any], data: DataSet, row: int) -> float:
-        z = data.z[row]
-        inside = self.grid <= data.meta["log_nhi_max"]
-        per_dex = f(self.grid, z) * 10.0**self.grid * self.width * np.log(10.0)
-        summed = np.trapezoid(per_dex[inside], self.grid[inside])
-        tau = (1.0 + z) / LYMAN_ALPHA.wavelength * float(self.cosmology.dx_dz(z)) * summed
+        tau = self._line_depth(f, 0, data.z[row], data.meta["log_nhi_max"])
+        return self._in_form(data, tau)
+
+    def _lyman_series_opacity(self, f: Callable[..., Any], data: DataSet, row: int) -> float:
+        main = LINES[data.meta["line"]]
+        lines = absorbing_lines(main, data.meta["foreground"] == "included")
+        observed = (1.0 + data.z[row]) * main.wavelength
+        top = data.meta["log_nhi_max"]
+        tau = sum(self._line_depth(f, j.n - 2, observed / j.wavelength - 1.0, top) for j in lines)
+        return self._in_form(data, tau)
+
+    def _in_form(self, data: DataSet, tau: float) -> float:
         forms = {"tau": tau, "mean_flux": np.exp(-tau), "decrement": 1.0 - np.exp(-tau)}
         return float(forms[data.meta["form"]])
+
+    def _line_depth(self, f: Callable[..., Any], line: int, z: float, top: float) -> float:
+        inside = self.grid <= top
+        per_dex = f(self.grid, z) * 10.0**self.grid * self.widths[line] * np.log(10.0)
+        summed = np.trapezoid(per_dex[inside], self.grid[inside])
+        return float((1.0 + z) * self.cosmology.dx_dz(z) * summed)
+
+    def _continuum_flux(self, f: Callable[..., Any], data: DataSet, row: int) -> float:
+        assert data.wavelength_lo is not None
+        assert data.wavelength_hi is not None
+        z = data.z[row]
+        middle = 0.5 * (data.wavelength_lo[row] + data.wavelength_hi[row])
+        tau = self._sightline(f, data, z, middle)
+        return float(np.exp(self._sightline(f, data, z, data.meta["reference_wavelength"]) - tau))
+
+    def _sightline(self, f: Callable[..., Any], data: DataSet, z_em: float, rest: float) -> float:
+        observed = (1.0 + z_em) * rest
+        z_912 = observed / LYMAN_LIMIT - 1.0
+        tau = self._depth(f, z_912, z_em) if z_912 < z_em else 0.0
+        for line, z in enumerate(observed / WHOLE_SERIES - 1.0):
+            if data.meta["lines"] == "included" and 0.0 <= z < z_em:
+                tau += self._line_depth(f, line, z, self.model.pivots[-1])
+        return tau
+
+    def _absorber_list(self, f: Callable[..., Any], data: DataSet, row: int) -> float:
+        assert data.role is not None
+        log_nhi = np.linspace(max(self.grid[0], 19.0), self.grid[-1], N_COLUMNS)
+        per_dex = np.log(10.0) * 10.0**log_nhi * completeness(data, log_nhi)
+        if data.role[row] == INTENSITY:
+            z = data.z_lo[row]
+            kernel = density(data.log_nhi_lo[row], log_nhi, data.err_lo[row], data.err_hi[row])
+            return float(self.cosmology.dx_dz(z)) * np.trapezoid(
+                f(log_nhi, z) * kernel * per_dex, log_nhi
+            )
+        ends = data.log_nhi_lo[row], data.log_nhi_hi[row]
+        if data.role[row] == EXPOSURE:
+            ends = data.meta["log_nhi_min"], data.meta.get("log_nhi_max") or np.inf
+        chance = selected(log_nhi, *ends, data.extras["errors_lo"], data.extras["errors_hi"])
+        return sum(
+            weight
+            * float(self.cosmology.dx_dz(z))
+            * np.trapezoid(f(log_nhi, z) * chance * per_dex, log_nhi)
+            for z, weight in zip(data.extras["path_z"], data.extras["path_weight"], strict=True)
+        )
 
     def _lls_incidence(self, f: Callable[..., Any], data: DataSet, row: int) -> float:
         z = data.z[row]

@@ -12,7 +12,7 @@ import sys
 from collections.abc import Sequence
 from importlib import metadata
 
-from fogline.commands import check, derive, predict, template
+from fogline.commands import check, derive, path, predict, template
 from fogline.commands.selection import UsageError
 from fogline.faults import InputError
 
@@ -64,7 +64,7 @@ def build_parser() -> argparse.ArgumentParser:
     version = metadata.version("fogline")
     parser.add_argument("--version", action="version", version=f"fogline {version}")
     commands = parser.add_subparsers(title="commands", metavar="COMMAND", required=True)
-    for command in (check, template, predict, derive):
+    for command in (check, template, path, predict, derive):
         command.add_to(commands)
     return parser
 

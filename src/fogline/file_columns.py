@@ -62,7 +62,8 @@ def _known_columns(spec: FileSpec, value_name: str) -> list[str]:
     known = ["z", "z_lo", "z_hi", value_name, "err", "err_lo", "err_hi", *_TEXT_COLUMNS]
     known += ["count", "path"] if spec.counts else []
     known += WAVELENGTHS if spec.wavelengths else []
-    known += ["sightline"] if spec.absorbers else []
+    if spec.absorbers:  # one redshift each
+        known = [name for name in known if name not in ("z_lo", "z_hi")] + ["sightline"]
     return known + (["log_nhi_lo", "log_nhi_hi"] if spec.column_bins else [])
 
 

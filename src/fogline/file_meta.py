@@ -35,6 +35,11 @@ def find_spec(raw: RawTable, faults: list[Fault]) -> FileSpec | None:
     if not isinstance(meta, dict):
         what = "ECSV header must have a mapping 'meta' with at least quantity and source"
         faults.append(Fault(raw.path, raw.meta_line(), what))
+    elif "quantity" not in meta and "kind" in meta:
+        what = (
+            f"is a table of kind '{meta['kind']}', not a constraint file: exclude it from datasets"
+        )
+        faults.append(Fault(raw.path, raw.meta_line("kind"), what))
     elif "quantity" not in meta:
         allowed = ", ".join(FILE_SPECS)
         what = f"meta lacks 'quantity' (what is measured); allowed: {allowed}"

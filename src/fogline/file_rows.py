@@ -204,7 +204,13 @@ def _check_wavelengths(rows: Rows) -> dict[str, Array]:
         name: rows.between(name, 0.0, np.inf) * in_angstrom(rows.raw, name)
         for name in ("wavelength_lo", "wavelength_hi")
     }
-    rows.ordered("wavelength_lo", "wavelength_hi")
+    low, high = edges.values()  # compared in Angstrom: the two may have different units
+    bad = np.isfinite(low) & np.isfinite(high) & ~(low < high)
+    rows.fault_where(
+        bad,
+        "wavelength_hi",
+        lambda row: f"greater than wavelength_lo = {rows.cell('wavelength_lo', row)}",
+    )
     return edges
 
 

@@ -76,10 +76,14 @@ def _check_wavelength(raw: RawTable, column: RawColumn, faults: list[Fault]) -> 
 
 
 def in_angstrom(raw: RawTable, name: str) -> float:
-    """Return one unit of a wavelength column in Angstrom."""
+    """Return one unit of a wavelength column in Angstrom; 1 where `check_units` found a fault."""
     column = raw.column(name)
     assert column is not None
-    return float(_unit(column.unit).to(units.Angstrom))
+    try:
+        unit = _unit(column.unit)
+    except (ValueError, TypeError):
+        return 1.0
+    return float(unit.to(units.Angstrom)) if _converts(unit, units.Angstrom) else 1.0
 
 
 def _check_measured(

@@ -4,7 +4,8 @@ The mean transmission over all sightlines is exp(-τ) with
 
     τ(λ) = τ_LC(λ) + Σ_j (1+z_j) (dX/dz) ∫ f(N, z_j) W_j / λ_j dN,     1 + z_j = λ / λ_j < 1 + z_em,
 
-j over the Lyman series up to n = `LAST_LEVEL`, and the Lyman continuum of all absorbers between
+j over the Lyman series (the lines above n = 12, which overlap in one thick absorber, as cells of
+`fogline.line_blending`), and the Lyman continuum of all absorbers between
 z_912 = λ / λ_912 - 1 (or redshift 0 where that is negative) and the source. For the continuum the
 exponential of this mean is exact: absorbers are Poisson distributed, and each takes out its share
 1 - exp(-N σ) whatever the others do. Lines are taken in the same way, as equivalent widths spread
@@ -22,8 +23,9 @@ from typing import Final
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from fogline.atomic import LYMAN_LIMIT, LymanLine, lyman_series
+from fogline.atomic import LYMAN_LIMIT, LYMAN_SERIES, LymanLine
 from fogline.doppler import mean_equivalent_width
+from fogline.line_blending import BLENDED_WAVELENGTHS, mean_blended_widths
 from fogline.quadrature import column_nodes
 from fogline.quantities.base import Block, Setting, over_doppler
 from fogline.settings import Distribution
@@ -31,8 +33,10 @@ from fogline.unit_depth import continuum_weights, grid_interpolation, redshift_g
 
 Array = NDArray[np.float64]
 
-LAST_LEVEL: Final = 40
-"""Highest upper level: the next line is 0.014 Å from this one, and 0.6 Å from the limit."""
+WHOLE_SERIES: Final[Array] = np.array(
+    [*(line.wavelength for line in LYMAN_SERIES), *BLENDED_WAVELENGTHS]
+)
+"""Wavelengths [Angstrom] of the lines, or cells of overlapping lines, of the whole series."""
 
 
 def depth_block(
@@ -52,7 +56,8 @@ def depth_block(
         Redshift of each source, and observed wavelengths [Angstrom] towards it.
     setting : Setting
     lines : sequence of LymanLine, optional
-        Lines that absorb; all up to `LAST_LEVEL` by default, none where empty.
+        Lines that absorb, as if each were alone; none where empty. By default the whole series,
+        with the overlap of its crowded end.
     continuum : bool
         Whether the Lyman continuum absorbs.
     columns : tuple of float, optional [dex of cm^-2]
@@ -65,9 +70,9 @@ def depth_block(
     Block
         One raw prediction, τ, for each wavelength of each source, in order.
     """
-    lines = lyman_series(LAST_LEVEL) if lines is None else lines
+    wave = WHOLE_SERIES if lines is None else np.array([line.wavelength for line in lines])
     grid = redshift_grid(
-        max(z for z, _ in sightlines), setting.distribution.breaks, _nearest(sightlines, lines)
+        max(z for z, _ in sightlines), setting.distribution.breaks, _nearest(sightlines, wave)
     )
     # Nodes of the whole range, so that all weights share them; panels end at the limits.
     ends = columns or ()
@@ -82,7 +87,7 @@ def depth_block(
     def build(doppler: Distribution) -> Block:
         widths = _widths(lines, every, setting, ends, doppler)
         in_lines = np.concatenate(
-            [_lines(z, _wavelengths(w), grid, setting, lines, widths) for z, w in sightlines],
+            [_lines(z, _wavelengths(w), grid, setting, wave, widths) for z, w in sightlines],
             axis=2,
         )
         weights = sum(parts, start=in_lines) * counted[:, None]
@@ -93,12 +98,12 @@ def depth_block(
             constants=constants,
         )
 
-    return over_doppler(setting, build) if lines else build({"dist": "fixed", "b": 1.0})
+    return over_doppler(setting, build) if len(wave) else build({"dist": "fixed", "b": 1.0})
 
 
-def _nearest(sightlines: Sequence[tuple[float, ArrayLike]], lines: Sequence[LymanLine]) -> float:
+def _nearest(sightlines: Sequence[tuple[float, ArrayLike]], lines: Array) -> float:
     """Return the lowest redshift at which anything absorbs, a hair below it."""
-    longest = max([LYMAN_LIMIT, *(line.wavelength for line in lines)])
+    longest = max(LYMAN_LIMIT, *lines) if len(lines) else LYMAN_LIMIT
     shortest = min(float(_wavelengths(wavelengths).min()) for _, wavelengths in sightlines)
     z_max = max(z for z, _ in sightlines)
     return max(0.0, min(shortest / longest - 1.0, 0.9 * z_max) - 1e-6)
@@ -128,7 +133,7 @@ def _continuum(
 
 
 def _widths(
-    lines: Sequence[LymanLine],
+    lines: Sequence[LymanLine] | None,
     log_nhi: Array,
     setting: Setting,
     panel_ends: Sequence[float],
@@ -137,8 +142,11 @@ def _widths(
     """Return W_j / λ_j times the column weights, shape (n_lines, n_columns)."""
     kinks = (*setting.distribution.kinks, *panel_ends)
     d_nhi = column_nodes(*setting.column_range, kinks)[1]
-    rows = [mean_equivalent_width(log_nhi, doppler, line) / line.wavelength for line in lines]
-    return np.array(rows).reshape(len(lines), len(log_nhi)) * d_nhi
+    alone = LYMAN_SERIES if lines is None else lines
+    rows = [mean_equivalent_width(log_nhi, doppler, line) / line.wavelength for line in alone]
+    if lines is None:
+        rows.extend(mean_blended_widths(log_nhi, doppler))
+    return np.array(rows).reshape(len(rows), len(log_nhi)) * d_nhi
 
 
 def _lines(
@@ -146,13 +154,13 @@ def _lines(
     wavelengths: Array,
     grid: Array,
     setting: Setting,
-    lines: Sequence[LymanLine],
+    lines: Array,
     widths: Array,
 ) -> Array:
     """Return weights of the lines' τ, shape (n_z, n_columns, n_wavelengths)."""
     weights = np.zeros((len(grid), widths.shape[1], len(wavelengths)))
     for line, width in zip(lines, widths, strict=True):
-        z = wavelengths / line.wavelength - 1.0
+        z = wavelengths / line - 1.0
         here = np.flatnonzero((z >= 0.0) & (z < z_em))
         if not len(here):
             continue

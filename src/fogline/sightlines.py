@@ -16,11 +16,11 @@ from typing import Final
 import numpy as np
 from numpy.typing import NDArray
 
-from fogline.atomic import LYMAN_LIMIT, lyman_series, photoionization_cross_section
+from fogline.atomic import LYMAN_LIMIT, photoionization_cross_section
 from fogline.filters import Filter
 from fogline.quantities.base import Setting
 from fogline.response import raw_predictions
-from fogline.sightline_depth import LAST_LEVEL, depth_block
+from fogline.sightline_depth import depth_block
 
 Array = NDArray[np.float64]
 
@@ -83,9 +83,7 @@ class Passband:
     ) -> Array:
         """Return τ of lines and of the continuum of a range of columns, (n, n_wavelengths)."""
         sightline = [(self.z, wavelength)]
-        lines = depth_block(
-            sightline, self.setting, lines=lyman_series(LAST_LEVEL), continuum=False
-        )
+        lines = depth_block(sightline, self.setting, continuum=False)
         depth = raw_predictions(self.setting, lines, theta)
         if continuum is None or continuum[1] > continuum[0]:
             block = depth_block(sightline, self.setting, lines=(), columns=continuum)

@@ -77,13 +77,19 @@ def _columns(spec: FileSpec, value: ValueColumn) -> Iterator[str]:
 
 def _alternatives(spec: FileSpec, value: ValueColumn) -> Iterator[str]:
     yield "# Other columns that may stand here:"
-    yield "#   z_lo, z_hi instead of z: a redshift bin (weighted by absorption distance)"
+    if spec.absorbers:
+        yield "#   sightline (a whole number, as in the survey path): on which it was found"
+    else:
+        yield "#   z_lo, z_hi instead of z: a redshift bin (weighted by absorption distance)"
     if spec.wavelengths:
         yield "#   wavelength_lo, wavelength_hi instead of wavelength: a bin of rest wavelengths"
     yield "#   err_lo, err_hi instead of err: errors that differ between the sides"
     empty = "" if value.logarithmic else "; err may then be empty"
-    yield '#   limit (string): upper, lower or empty (""); value is then the limit at the'
-    yield f"#     confidence in meta{empty}"
+    if spec.absorbers:
+        yield '#   limit (string): lower or empty (""); log_nhi is then a lower bound, err optional'
+    else:
+        yield '#   limit (string): upper, lower or empty (""); value is then the limit at the'
+        yield f"#     confidence in meta{empty}"
     if spec.counts:
         yield f"#   count, path instead of {value.name} and err: absorbers found and path searched"
         yield "#     (of the kind that 'per' says, summed over sightlines); errors are then Poisson"

@@ -11,11 +11,20 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose
+from scipy import special
 from scipy.integrate import quad
 from test_accuracy import DOPPLER, FEWER, RTOL, rows, setting_of, truths
 
-from fogline.atomic import LYMAN_LIMIT, LYMAN_SERIES, equivalent_width, lyman_series
+from fogline import constants
+from fogline.atomic import (
+    LYMAN_LIMIT,
+    LYMAN_SERIES,
+    equivalent_width,
+    lyman_series,
+    photoionization_cross_section,
+)
 from fogline.datasets import hypothetical
+from fogline.quadrature import column_nodes
 from fogline.response import build_response, raw_predictions
 from fogline.sightline_depth import depth_block
 from reference_integrals import Truth, background, cross_section, dx_dz
@@ -87,6 +96,72 @@ def test_depth_of_a_range_of_columns_and_of_several_sources(truth):
         for w in wavelengths
     ]
     assert_allclose(raw, expected, rtol=RTOL)
+
+
+def test_whole_series_takes_every_absorber_as_one_profile():
+    """All lines and the continuum in one profile σ(λ) an absorber, no line taken alone.
+
+    τ(λ) = ∫ dz (dX/dz) ∫ f {1 - exp[-N σ(λ / (1+z))]} dN, on steps of a fifth of a Doppler width.
+    """
+    z_em, setting = 3.4, setting_of(PLAIN)
+    rest = np.array([905.0, 916.5])
+    block = depth_block([(z_em, (1.0 + z_em) * rest)], setting)
+    found = raw_predictions(setting, block, PLAIN.theta[None])[0]
+    log_nhi, d_nhi = column_nodes(12.0, 22.5, setting.distribution.kinks)
+    width = DOPPLER / 299792.458
+    expected = []
+    for wavelength in rest * (1.0 + z_em):
+        ln_rest = np.arange(np.log(wavelength / (1.0 + z_em)), np.log(1250.0), 0.2 * width)
+        z = wavelength / np.exp(ln_rest) - 1.0
+        sigma = whole_profile(ln_rest, DOPPLER)
+        near = np.flatnonzero(sigma > 1e-26)
+        f = 10.0 ** setting.distribution.log_f(
+            PLAIN.theta, np.tile(log_nhi, len(near)), np.repeat(z[near], len(log_nhi))
+        ).reshape(len(near), -1)
+        absorbed = -np.expm1(-sigma[near, None] * 10.0**log_nhi)
+        along = (1.0 + z[near]) * dx_dz(PLAIN.cosmology, z[near])
+        expected.append(np.trapezoid(along * ((f * absorbed) @ d_nhi), ln_rest[near]))
+    # Lines up to n = 12 are taken as not overlapping and symmetric in λ.
+    assert_allclose(found, expected, rtol=2e-3)
+    # Separate lines up to n = 40 would be far off below the limit.
+    block = depth_block([(z_em, (1.0 + z_em) * rest)], setting, lines=lyman_series(40))
+    alone = raw_predictions(setting, block, PLAIN.theta[None])[0]
+    assert alone[0] > 1.02 * expected[0]
+
+
+def whole_profile(ln_rest, b, last=150):
+    """Cross-section [cm^2] of lines 2 to 150 and the continuum, whose edge is smeared by b."""
+    edge = np.log(LYMAN_LIMIT / (1.0 - 1.0 / (last + 0.5) ** 2))
+    speed = (ln_rest - edge) * constants.C_CGS / (b * 1e5)
+    ratio = np.maximum(LYMAN_LIMIT / np.exp(ln_rest), 1.0)
+    sigma = 0.5 * photoionization_cross_section(ratio) * special.erfc(speed)
+    for line in lyman_series(last):
+        wavelength = line.wavelength * 1e-8
+        x = (ln_rest - np.log(line.wavelength)) * constants.C_CGS / (b * 1e5)
+        damping = line.gamma * wavelength / (4.0 * np.pi * b * 1e5)
+        scale = constants.LINE_AREA * line.f * wavelength / (np.pi**0.5 * b * 1e5)
+        sigma += scale * special.wofz(x + 1j * damping).real
+    return sigma
+
+
+def test_no_foreground_from_beyond_the_observer():
+    # Lyγ at z = 0.1 is seen at 1070 Å, where Lyα absorbers would need z < 0.
+    limits = {"log_nhi_min": 12.2, "log_nhi_max": 17.2, "form": "tau"}
+    meta = {"line": "gamma", **limits}
+    data = [
+        rows("lyman_series_opacity", [(0.1, 0.1)], foreground=foreground, **meta)
+        for foreground in ("included", "removed")
+    ]
+    beta = rows(
+        "lyman_series_opacity",
+        [(1.1 * LYMAN_SERIES[2].wavelength / LYMAN_SERIES[1].wavelength - 1.0,) * 2],
+        foreground="removed",
+        **{**meta, "line": "beta"},
+    )
+    included, removed, of_beta = build_response([*data, beta], setting_of(PLAIN)).predict(
+        PLAIN.theta
+    )
+    assert included == pytest.approx(removed + of_beta, rel=1e-12)
 
 
 def stacked(z, wavelength_lo, wavelength_hi, **meta):

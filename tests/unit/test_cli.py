@@ -18,7 +18,7 @@ from fogline.config import load_config
 from fogline.faults import InputError
 from fogline.points import read_point
 from fogline.quantities import FILE_SPECS
-from fogline.side_tables import SIDE_TABLES
+from fogline.side_tables import SIDE_TABLES, side_template
 from fogline.templates import template
 
 CONFIG = """\
@@ -50,7 +50,9 @@ def study(tmp_path, monkeypatch):
     for folder in ("data", "config"):
         (tmp_path / folder).mkdir()
     for quantity in FILE_SPECS:
-        (tmp_path / "data" / f"{quantity}.ecsv").write_text(template(quantity), encoding="utf-8")
+        text = template(quantity).replace("survey_path: path", "survey_path: ../path")
+        (tmp_path / "data" / f"{quantity}.ecsv").write_text(text, encoding="utf-8")
+    (tmp_path / "path.ecsv").write_text(side_template("sightlines"), encoding="utf-8")
     (tmp_path / "config" / "config.yaml").write_text(CONFIG, encoding="utf-8")
     (tmp_path / "point.yaml").write_text(POINT, encoding="utf-8")
     monkeypatch.chdir(tmp_path)

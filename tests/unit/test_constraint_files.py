@@ -14,7 +14,7 @@ from astropy import units
 from astropy.table import Table
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
-from numpy.testing import assert_array_equal
+from numpy.testing import assert_allclose, assert_array_equal
 
 from fogline.column_ranges import check_column_range, column_ranges
 from fogline.constraint_files import read_constraint_file, read_constraint_files
@@ -131,12 +131,54 @@ z value err
 2.5 8.0e-4 1.0e-4
 """
 
+FLUX = """\
+# %ECSV 1.0
+# ---
+# datatype:
+# - {name: z, datatype: float64}
+# - {name: wavelength_lo, unit: nm, datatype: float64}
+# - {name: wavelength_hi, unit: Angstrom, datatype: float64}
+# - {name: value, datatype: float64}
+# - {name: err, datatype: float64}
+# meta:
+#   quantity: continuum_flux
+#   source: invented
+#   lines: included
+#   reference_wavelength: 920.0
+# schema: astropy-2.0
+z wavelength_lo wavelength_hi value err
+3.1 88.0 890.0 0.7 0.03
+3.1 89.0 905.0 0.8 0.04
+"""
+
+SERIES = """\
+# %ECSV 1.0
+# ---
+# datatype:
+# - {name: z, datatype: float64}
+# - {name: value, datatype: float64}
+# - {name: err, datatype: float64}
+# meta:
+#   quantity: lyman_series_opacity
+#   source: invented
+#   line: gamma
+#   foreground: included
+#   form: decrement
+#   log_nhi_min: 12.0
+#   log_nhi_max: 17.2
+# schema: astropy-2.0
+z value err
+2.8 0.31 0.02
+"""
+
 VALID = {
     "lya": LYA,
     "counts": COUNTS,
     "lengths": LENGTHS,
     "columns": COLUMNS,
     "density": DENSITY,
+    "flux": FLUX,
+    "series": SERIES,
 }
 
 
@@ -205,6 +247,18 @@ def test_column_bins_in_dex(tmp_path):
     assert_array_equal(data.log_nhi_lo, [20.3, 20.6])
     assert_array_equal(data.log_nhi_hi, [20.6, 21.0])
     assert_array_equal(data.observed, [-21.5, -22.3])
+
+
+def test_wavelengths_are_read_in_angstrom(tmp_path):
+    data = read(tmp_path, FLUX)
+    assert_allclose(data.wavelength_lo, [880.0, 890.0], rtol=1e-14)
+    assert_allclose(data.wavelength_hi, [890.0, 905.0], rtol=1e-14)
+    assert data.meta["reference_wavelength"] == 920.0
+    single = FLUX.replace("wavelength_lo", "wavelength")
+    single = re.sub(r"# - {name: wavelength_hi.*\n", "", single).replace("wavelength_hi ", "")
+    single = single.replace(" 890.0", "").replace(" 905.0", "")
+    data = read(tmp_path, single)
+    assert_array_equal(data.wavelength_lo, data.wavelength_hi)
 
 
 def test_density_keeps_its_helium_factor(tmp_path):
@@ -385,6 +439,30 @@ BAD = {
     "limit of another kind": ("lya", " upper", " above", "above", "limit is above", "lower"),
     "columns upside down": ("columns", "20.6 21.0", "21.0 20.6", "21.0 20.6", "log_nhi_hi is 20.6"),
     "N for log N in rows": ("columns", "20.6 21.0", "20.6 1e21", "1e21", "log_nhi_hi", "[8, 26]"),
+    # composite spectra and higher lines
+    "bin of wavelengths upside down": (
+        *("flux", "89.0 905.0", "91.0 905.0", "91.0 905.0"),
+        *("wavelength_hi is 905.0", "greater than wavelength_lo = 91.0"),
+    ),
+    "negative wavelength": ("flux", "88.0", "-88.0", "-88.0", "wavelength_lo is -88.0", "> 0"),
+    "wavelength missing": ("flux", "3.1 88.0", '3.1 ""', '3.1 ""', "wavelength_lo is empty"),
+    "wavelength without unit": ("flux", "unit: nm, ", "", "name: wavelength_lo", "is missing"),
+    "wavelength in Hz": ("flux", "unit: nm", "unit: Hz", "unit: Hz", "convertible to Angstrom"),
+    "half a wavelength bin": ("flux", "wavelength_hi", "label", "datatype:", "'wavelength_hi'"),
+    "no wavelengths": (
+        *("flux", r"# - {name: wavelength.*\n|wavelength_.. | [89]\d\.0 \d+\.0", ""),
+        *("datatype:", "lacks column 'wavelength'"),
+    ),
+    "wavelength unknown unit": ("flux", "unit: nm", "unit: nn", "unit: nn", "not a known unit"),
+    "wavelengths of an opacity": ("series", r"err\b", "wavelength", "name: wavelength", "unknown"),
+    "lines neither in nor out": ("flux", ": included", ": some", "lines:", "included | removed"),
+    "no word on lines": ("flux", "#   lines: included\n", "", "meta:", "lacks 'lines'"),
+    "reference of 0": ("flux", "length: 920.0", "length: 0", "reference_wavelength", "[1, 100000]"),
+    "flux below 0": ("flux", " 0.7 ", " -0.7 ", "-0.7", "value is -0.7", "(0, 10)"),
+    "Lya as a higher line": ("series", "gamma", "alpha", "line:", "beta | gamma"),
+    "no word on the foreground": (
+        *("series", "#   foreground: included\n", "", "meta:", "lacks 'foreground'"),
+    ),
     # form of the file
     "no rows": ("density", r"2\.5 8.*\n", "", "z value err", "no rows"),
     "no names": ("density", r"z value err\n2\.5.*\n", "", "schema", "no rows"),
@@ -506,6 +584,8 @@ def test_column_ranges(tmp_path):
         "lengths": (None, None),
         "columns": (20.3, 21.0),
         "density": (20.3, 22.0),
+        "flux": (None, None),
+        "series": (12.0, 17.2),
     }
 
 

@@ -113,6 +113,29 @@ def study_files() -> dict[str, tuple[dict[str, Any], dict[str, Any], float, str]
             0.06,
             "",
         ),
+        "forest_beta": (
+            {
+                "quantity": "lyman_series_opacity",
+                "line": "beta",
+                "foreground": "removed",
+                "form": "decrement",
+                "log_nhi_min": 12.0,
+                "log_nhi_max": 17.2,
+            },
+            {"z": np.array([2.6, 3.0, 3.4])},
+            0.08,
+            "",
+        ),
+        "composite": (
+            {"quantity": "continuum_flux", "lines": "included", "reference_wavelength": 920.0},
+            {
+                "z": np.full(4, 3.6),
+                "wavelength_lo": [850.0, 870.0, 890.0, 905.0],
+                "wavelength_hi": [870.0, 890.0, 905.0, 911.0],
+            },
+            0.05,
+            "",
+        ),
         "forest_columns": (
             {"quantity": "column_distribution", "per": "dX", "cosmology": OURS},
             bins,
@@ -192,6 +215,9 @@ def write_study(folder: Path, values: Mapping[str, np.ndarray] | None = None) ->
                 table[key].unit = unit or None
         if name == "lls_all":
             table["limit"] = ["", "", "upper"]
+        for key in keys:
+            if key.startswith("wavelength"):
+                table[key].unit = "Angstrom"
         table.meta = {"source": "invented", **meta}
         paths.append(str(folder / f"{name}.ecsv"))
         table.write(paths[-1], format="ascii.ecsv", overwrite=True)
@@ -408,6 +434,32 @@ def test_mean_flux_is_shown_as_its_own_optical_depth(
     assert_allclose(points.y_lo, -np.log(data.observed + data.err_hi))
 
 
+def test_higher_lines_stand_beside_lya_as_open_symbols(
+    study: FigureInputs, figures: dict[str, Figure]
+) -> None:
+    data = dataset(study, "forest_beta")
+    (line,) = lines(figures["lya_opacity"], "data:forest beta")
+    assert_allclose(line.get_xydata(), np.column_stack([data.z, -np.log1p(-data.observed)]))
+    assert line.get_markerfacecolor() == "white"
+    predicted = drawn_at(figures["lya_opacity"], "prediction:forest beta")
+    assert_allclose(predicted[:, 1], -np.log1p(-study.predicted(data)[1]))
+
+
+def test_composite_stands_below_the_curves_with_its_own_prediction(
+    study: FigureInputs, figures: dict[str, Figure]
+) -> None:
+    data = dataset(study, "composite")
+    assert data.wavelength_lo is not None
+    assert data.wavelength_hi is not None
+    curves, composites = figures["transmission"].axes
+    assert "observed wavelength" in curves.get_xlabel()
+    assert "rest wavelength" in composites.get_xlabel()
+    middle = 0.5 * (data.wavelength_lo + data.wavelength_hi)
+    for mark, y in (("data", data.observed), ("prediction", study.predicted(data)[1])):
+        drawn = drawn_at(figures["transmission"], f"{mark}:composite")
+        assert_allclose(drawn, np.column_stack([middle, y]))
+
+
 def test_an_upper_limit_of_the_flux_is_a_lower_one_of_the_depth(study: FigureInputs) -> None:
     data = dataset(study, "forest_flux")
     limited = replace(data, limit=np.array([1, -1, 0, 0, 0]))
@@ -472,6 +524,7 @@ def test_gas_densities_lose_their_helium_and_nothing_else(
     ("figure", "name", "note"),
     [
         ("lya_opacity", "forest tau", r"$\log N = 12$–$19$"),
+        ("lya_opacity", "forest beta", r"Ly$\beta$"),
         ("lls_incidence", "lls all", "$H_0 = 72$"),
         ("mean_free_path", "path local", "$H_0 = 72$"),
         ("hi_density", "dla density", r"$\log N \geq 20.3$"),

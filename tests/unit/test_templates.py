@@ -11,10 +11,12 @@ from astropy.table import Table
 from fogline.constraint_files import read_constraint_file
 from fogline.quantities import FILE_SPECS
 from fogline.quantities.spec import COMMON_META
+from fogline.side_tables import side_template
 from fogline.templates import template
 
 
 def read(folder, text):
+    (folder / "path.ecsv").write_text(side_template("sightlines"), encoding="utf-8")
     path = folder / "starter.ecsv"
     path.write_text(text, encoding="utf-8")
     return read_constraint_file(path)
@@ -24,8 +26,8 @@ def read(folder, text):
 def test_template_is_valid_as_printed(tmp_path, quantity):
     data = read(tmp_path, template(quantity))
     assert data.quantity == quantity
-    assert data.n_rows == 2
-    assert all(data.labels)
+    assert data.n_listed == 2
+    assert all(data.labels) or quantity == "absorber_list"
     table = Table.read(tmp_path / "starter.ecsv", format="ascii.ecsv")
     assert table.meta["quantity"] == quantity
 
@@ -42,7 +44,7 @@ def test_template_explains_every_key(quantity):
 @pytest.mark.parametrize("quantity", FILE_SPECS)
 def test_template_says_how_limits_and_bins_are_written(quantity):
     text = template(quantity)
-    assert "z_lo, z_hi instead of z" in text
+    assert ("z_lo, z_hi instead of z" in text) == (quantity != "absorber_list")
     assert "err_lo, err_hi instead of err" in text
     assert ("count, path" in text) == FILE_SPECS[quantity].counts
 

@@ -11,10 +11,14 @@ from __future__ import annotations
 from typing import Any, Final
 
 import numpy as np
+from astropy.table import Table
 from numpy.polynomial import chebyshev
 from numpy.typing import NDArray
 
 Array = NDArray[np.float64]
+
+STEP_WIDTH: Final = 1e-6
+"""Half the redshift over which a tabulated number of sightlines changes, at most."""
 
 PATH_NODES: Final = 8
 """Redshifts that stand for a path: over one survey f dX/dz is a polynomial of that degree."""
@@ -114,3 +118,26 @@ def coverage(z_start: Array, z_end: Array) -> tuple[Array, Array]:
     starts = np.searchsorted(np.sort(z_start), z, side="right")
     ends = np.searchsorted(np.sort(z_end), z, side="right")
     return z, (starts - ends).astype(float)
+
+
+def sensitivity_table(z_start: Array, z_end: Array) -> Table:
+    """Return g(z) of sightlines as a table that is linear between rows.
+
+    Parameters
+    ----------
+    z_start, z_end : ndarray, shape (n_sightlines,)
+
+    Returns
+    -------
+    astropy.table.Table
+        ``z``, ``g``: two rows at each change, `STEP_WIDTH` apart.
+    """
+    z, g = coverage(z_start, z_end)
+    before = np.concatenate([[0.0], g[:-1]])
+    # A step must not be wider than what lies between two changes.
+    width = min(STEP_WIDTH, 0.25 * float(np.diff(z).min())) if len(z) > 1 else STEP_WIDTH
+    table = Table()
+    table["z"] = np.stack([z - width, z + width], axis=1).ravel()
+    table["g"] = np.stack([before, g], axis=1).ravel()
+    table.meta = {"kind": "sensitivity"}
+    return table

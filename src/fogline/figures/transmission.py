@@ -76,7 +76,7 @@ def _draw_composites(axes: Axes, inputs: FigureInputs) -> None:
         style = styles[data.name]
         middle = 0.5 * (data.wavelength_lo + data.wavelength_hi)
         errors = np.nan_to_num([data.err_lo, data.err_hi])
-        axes.errorbar(
+        points = axes.errorbar(
             middle,
             data.observed,
             yerr=errors,
@@ -86,12 +86,14 @@ def _draw_composites(axes: Axes, inputs: FigureInputs) -> None:
             elinewidth=0.9,
             label=f"{style.label} ($z = {data.z[0]:.3g}$)",
         )
+        points[0].set_gid(f"data:{style.label}")
         lo, median, hi = inputs.predicted(data)
         order = np.argsort(middle)
         axes.fill_between(
             middle[order], lo[order], hi[order], color=style.colour, alpha=0.25, linewidth=0.0
         )
-        axes.plot(middle[order], median[order], color=style.colour, linewidth=0.9)
+        (line,) = axes.plot(middle[order], median[order], color=style.colour, linewidth=0.9)
+        line.set_gid(f"prediction:{style.label}")
     axes.set_xlabel(r"rest wavelength [$\mathrm{\AA}$]")
     axes.set_ylabel("flux over reference")
     axes.legend(loc="upper left")

@@ -24,12 +24,12 @@ from typing import Final
 import numpy as np
 from numpy.typing import NDArray
 
-from fogline.atomic import LYMAN_LIMIT, lyman_series
+from fogline.atomic import LYMAN_LIMIT
 from fogline.datasets import DataSet
 from fogline.quadrature import interval_nodes
 from fogline.quantities.base import Block, Setting, row_redshifts
 from fogline.quantities.spec import FileSpec, MetaKey, ValueColumn, column_key
-from fogline.sightline_depth import LAST_LEVEL, depth_block
+from fogline.sightline_depth import WHOLE_SERIES, depth_block
 
 Array = NDArray[np.float64]
 
@@ -78,8 +78,8 @@ class ContinuumFlux:
         """Return τ at every wavelength node, and at the reference, of every redshift node."""
         assert data.wavelength_lo is not None
         assert data.wavelength_hi is not None
-        lines = lyman_series(LAST_LEVEL) if data.meta["lines"] == "included" else ()
-        edges = [line.wavelength for line in lines] + [LYMAN_LIMIT]
+        included = data.meta["lines"] == "included"
+        edges = [LYMAN_LIMIT, *(WHOLE_SERIES if included else ())]
         reference = data.meta.get("reference_wavelength")
         # Rows share sources and the reference: every redshift and wavelength is computed once.
         wanted: dict[tuple[float, float], int] = {}
@@ -98,7 +98,7 @@ class ContinuumFlux:
         return depth_block(
             [(z, (1.0 + z) * wavelength) for z, wavelength in wanted],
             setting,
-            lines=lines,
+            lines=None if included else (),
             columns=columns,
             mean=_matrix(mean, shape),
             reference=_matrix(references, shape),

@@ -87,6 +87,8 @@ class LymanSeriesOpacity:
             kernel = mean_equivalent_width(log_nhi, doppler, line) / line.wavelength * d_nhi
             for i, (_, z, _) in enumerate(nodes):
                 z_line = (1.0 + z) * main.wavelength / line.wavelength - 1.0
+                if z_line < 0.0:  # that line's absorbers would lie in front of the observer
+                    continue
                 along = (1.0 + z_line) * float(setting.cosmology.dx_dz(z_line))
                 terms.append((i, Term(z_line, log_nhi, along * kernel)))
         return assemble(terms, len(nodes), mean=bin_mean(nodes, data.n_rows))
