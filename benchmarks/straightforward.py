@@ -14,6 +14,7 @@ from typing import Any
 import numpy as np
 from scipy.interpolate import PchipInterpolator
 
+from fogline.absorbers.errors import density, selected
 from fogline.atomic import (
     LYMAN_LIMIT,
     LYMAN_SERIES,
@@ -21,7 +22,7 @@ from fogline.atomic import (
     photoionization_cross_section,
 )
 from fogline.cosmology import C_KM_S
-from fogline.datasets import DataSet
+from fogline.datasets import EXPOSURE, INTENSITY, DataSet
 from fogline.doppler import mean_equivalent_width
 from fogline.likelihood import Likelihood
 from fogline.line_blending import mean_blended_widths

@@ -11,8 +11,8 @@ def add_to(commands: Any) -> None:
     """Add the command to a parser's subparsers."""
     text = (
         "Turn the sightlines of a survey (kind sightlines: z_start, z_end) into g(z), the number "
-        "that cover each redshift (kind sensitivity). Every change of g stands as two rows, before and "
-        "after it, since g is linear between rows."
+        "that cover each redshift (kind sensitivity). Every change of g stands as two rows, before "
+        "and after it, since g is linear between rows."
     )
     help = "turn a list of sightlines into g(z)"
     parser = commands.add_parser("path", help=help, description=text)
