@@ -12,8 +12,12 @@ from astropy.table import Table
 DEFINITION: Final = (
     "shift_sigma: (median - reference_median) over half the 68% widths of the two analyses added "
     "in quadrature. The analyses share data, so that their errors are correlated: the shift says "
-    "how far a conclusion moves in units of its error, and is not a significance."
+    "how far a conclusion moves in units of its error, and is not a significance. ln_evidence: "
+    "ln Z with its numerical error; only analyses of the same data sets may be compared by it."
 )
+
+EVIDENCE: Final = "ln_evidence"
+"""Quantity of the rows that hold ln Z."""
 
 REDSHIFTS: Final = (2.5, 3.5, 4.5)
 """Redshifts of the comparison; each table's nearest is taken."""
@@ -72,13 +76,18 @@ class Value:
         return 0.5 * (self.hi68 - self.lo68) if np.isfinite(self.hi68) else float("inf")
 
 
-def compare(results: Mapping[str, Mapping[str, Table]]) -> Table:
+def compare(
+    results: Mapping[str, Mapping[str, Table]],
+    evidences: Mapping[str, tuple[float, float]] | None = None,
+) -> Table:
     """Compare the headline quantities of analyses with those of the first.
 
     Parameters
     ----------
     results : mapping of str to mapping of str to astropy.table.Table
         The derived tables of every analysis by their names; the first analysis is the reference.
+    evidences : mapping of str to (float, float), optional
+        ln Z of every analysis, and its error.
 
     Returns
     -------
@@ -94,9 +103,20 @@ def compare(results: Mapping[str, Mapping[str, Table]]) -> Table:
         for value in _values(results[analysis])
         if (value.quantity, value.z) in wanted
     ]
+    if evidences:
+        rows += [_evidence_row(name, reference, evidences) for name in others]
     table = Table(rows=rows, names=list(DTYPES), dtype=list(DTYPES.values()))
     table.meta["definition"] = DEFINITION
     return table
+
+
+def _evidence_row(
+    analysis: str, reference: str, evidences: Mapping[str, tuple[float, float]]
+) -> tuple[object, ...]:
+    """Return ln Z with its error as the band; a shift in units of that error says nothing."""
+    ln_z, error = evidences[analysis]
+    base, nan = evidences[reference][0], float("nan")
+    return (analysis, reference, EVIDENCE, nan, ln_z, ln_z - error, ln_z + error, base, nan)
 
 
 def _row(analysis: str, reference: str, value: Value, base: Value) -> tuple[object, ...]:

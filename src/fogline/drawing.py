@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from fogline.chains import EnsembleResult
 from fogline.combining import replicate_rng
-from fogline.comparison import compare
+from fogline.comparison import EVIDENCE, compare
 from fogline.figures import FIGURES, FigureInputs, draw_comparison, save
 from fogline.posterior_file import read_draws
 from fogline.response_file import Fit
@@ -63,7 +63,12 @@ def prior_draws(fit: Fit) -> Array:
 
 
 def write_comparison(
-    analyses: Sequence[str], tables: Sequence[str], *, table: str | Path, figure: str | Path
+    analyses: Sequence[str],
+    tables: Sequence[str],
+    convergence: Sequence[str],
+    *,
+    table: str | Path,
+    figure: str | Path,
 ) -> None:
     """Compare the derived quantities of analyses with those of the first.
 
@@ -73,12 +78,19 @@ def write_comparison(
         The first is the reference.
     tables : sequence of str
         Files ``<analysis>/tables/<name>.ecsv`` of all analyses.
+    convergence : sequence of str
+        Files ``<analysis>/convergence.json``.
     table, figure : path-like
         Table and figure to write; the figure's suffix is replaced by each form's.
     """
     by_analysis: dict[str, dict[str, Table]] = {name: {} for name in analyses}
     for path in map(Path, tables):
         by_analysis[path.parent.parent.name][path.stem] = read_table(path)
-    shifts = compare(by_analysis)
+    reports = {
+        Path(path).parent.name: json.loads(Path(path).read_text(encoding="utf-8"))["evidence"]
+        for path in convergence
+    }
+    evidences = {name: (report["ln_z"], report["error"]) for name, report in reports.items()}
+    shifts = compare(by_analysis, evidences)
     write_table(shifts, table)
-    save(draw_comparison(shifts), Path(figure).with_suffix(""))
+    save(draw_comparison(shifts[shifts["quantity"] != EVIDENCE]), Path(figure).with_suffix(""))

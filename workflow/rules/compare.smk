@@ -3,6 +3,7 @@ rule compare_analyses:
         tables=expand(
             "results/{analysis}/tables/{table}.ecsv", analysis=ANALYSES, table=TABLES
         ),
+        convergence=expand("results/{analysis}/convergence.json", analysis=ANALYSES),
     output:
         table="results/comparison/tables/shifts.ecsv",
         pdf="results/comparison/figures/shifts.pdf",

@@ -8,6 +8,7 @@ with job(snakemake.log[0]):
     write_comparison(
         snakemake.params.analyses,
         snakemake.input.tables,
+        snakemake.input.convergence,
         table=snakemake.output.table,
         figure=snakemake.output.pdf,
     )

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Any, Protocol
 
 import numpy as np
@@ -63,6 +64,23 @@ class Draws:
     background_kind: str = ""
     background: Mapping[str, Array] = field(default_factory=dict)
     highest_column: float | None = None
+
+    @cached_property
+    def _made(self) -> dict[str, Array]:
+        return {}
+
+    def memo(self, name: str, make: Callable[[], Array]) -> Array:
+        """Return what several tables need and one of them has made already.
+
+        Parameters
+        ----------
+        name : str
+        make : callable
+            Makes it where nobody has.
+        """
+        if name not in self._made:
+            self._made[name] = make()
+        return self._made[name]
 
     @property
     def spectrum(self) -> Spectrum:

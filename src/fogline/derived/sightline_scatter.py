@@ -32,11 +32,11 @@ class SightlineScatterTable:
     over_sightlines = True
     definition = (
         "Transmission T through a filter towards a source at z_source: bands run over single "
-        "sightlines drawn from posterior samples (absorbers Poisson-drawn above log N = 15.5, "
-        "lower ones and lines by their mean), and hold both the scatter between sightlines and "
-        "the posterior's. thick_number: absorbers with tau_912 >= 1 between the source and the "
-        "redshift whose limit is the filter's blue end. opaque: share of sightlines with T < 0.01 "
-        "in each posterior draw."
+        "sightlines drawn from posterior samples (absorbers Poisson-drawn above log N = 15.5 "
+        "without clustering, lower ones by their mean), and hold both the scatter between "
+        "sightlines and the posterior's. thick_number: absorbers with tau_912 >= 1 between the "
+        "source and the redshift whose limit is the filter's blue end. opaque: share of "
+        "sightlines with T < 0.01 in each posterior draw."
     )
 
     def keys(self, draws: Draws) -> Mapping[str, tuple[Any, str, str]]:
@@ -45,7 +45,7 @@ class SightlineScatterTable:
 
     def curves(self, draws: Draws) -> Mapping[str, Curve]:
         """Return the transmission of every sightline, and the share that is opaque."""
-        transmission = sightlines(draws)
+        transmission = draws.memo("sightlines", lambda: sightlines(draws))
         by_draw = transmission.reshape(-1, draws.sightlines_per_draw, transmission.shape[1])
         opaque = (by_draw < OPAQUE).mean(axis=1)
         number = np.stack([_thick_absorbers(draws, band) for band in passbands(draws)], axis=1)
@@ -78,7 +78,7 @@ class EscapeCorrectionTable:
         """Return the factors."""
         mean = np.stack([band.mean(draws.theta) for band in passbands(draws)], axis=1)
         with np.errstate(divide="ignore", over="ignore"):
-            single = 1.0 / sightlines(draws)
+            single = 1.0 / draws.memo("sightlines", lambda: sightlines(draws))
             return {
                 "mean_transmission": Curve(mean, "", "mean transmission"),
                 "of_mean": Curve(1.0 / mean, "", "1 / mean transmission"),
