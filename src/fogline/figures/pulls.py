@@ -71,7 +71,7 @@ def draw(inputs: FigureInputs) -> Figure:
 def _draw_strip(axes: Axes, strip: int, data: DataSet, rows: Table, style: DataStyle) -> None:
     pulls = np.asarray(rows["pull"], float)
     y = strip + (np.linspace(-SPREAD, SPREAD, len(pulls)) if len(pulls) > 1 else np.zeros(1))
-    limited = data.limit != 0
+    limited = data.limit[data.visible] != 0
     for chosen, face in ((~limited, style.colour), (limited, "white")):
         axes.plot(
             pulls[chosen],
@@ -121,7 +121,7 @@ def _dress(axes: Axes, labels: list[str], pulls: Array) -> None:
 
 def _notes(table: Table, datasets: tuple[DataSet, ...]) -> list[str]:
     notes = ["Rows from top to bottom as in the file. $p$: posterior predictive, by data set."]
-    if any((data.limit != 0).any() for data in datasets):
+    if any((data.limit[data.visible] != 0).any() for data in datasets):
         notes.append("Open: limits, against the measurement behind them.")
     if _outside(table).any():
         notes.append("Red rings: outside the replicates (two-sided $p < 0.0027$).")
