@@ -216,3 +216,16 @@ def test_likelihood_is_that_of_a_poisson_process():
     with_scale = Likelihood.from_datasets([scaled]).ln_total(predicted, np.full((2, 1), 1.3))
     shift = 40.0 * np.log(1.3) - 0.3 * predicted[:, exposure][:, 0]
     assert_allclose(with_scale, expected + shift, rtol=1e-10)
+
+
+def test_f_that_ends_below_an_absorber_is_refused_without_nan():
+    data = absorber_list(
+        some_list(np.random.default_rng(8)), from_sightlines(np.array([2.2]), np.array([3.4]))
+    )
+    predicted = np.ones((1, data.n_rows))
+    predicted[:, data.role == INTENSITY] = np.where(
+        data.log_nhi_lo[data.role == INTENSITY] > 21.0, 0.0, 1.0
+    )
+    ln_p = Likelihood.from_datasets([data]).ln_total(predicted)[0]
+    assert np.isfinite(ln_p)
+    assert ln_p < -1000.0

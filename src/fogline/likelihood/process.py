@@ -10,11 +10,13 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
-from scipy.special import xlogy
 
 from fogline.datasets import INTENSITY
 from fogline.likelihood.base import Array, Indices, RowData
 from fogline.likelihood.rows import CountRows
+
+LEAST_INTENSITY = float(np.finfo(float).tiny)
+"""Where f has fallen to nothing, ln of this stands for its intensity: -708 for each absorber."""
 
 
 @dataclass(frozen=True)
@@ -32,7 +34,9 @@ class ProcessRows:
         """Return n ln λ of cells, and -Λ, shape (n, k)."""
         expected = model[:, self.rows]
         number = self.data.observed[self.rows] * self._is_cell
-        return np.asarray(xlogy(number, expected) - (1.0 - self._is_cell) * expected)
+        # Some cells hold a negative number: an intensity of zero must not make inf - inf of them.
+        ln_intensity = np.log(np.maximum(expected, LEAST_INTENSITY))
+        return np.asarray(number * ln_intensity - (1.0 - self._is_cell) * expected)
 
     def replicate(self, model: Array, scatter: Array | None, rng: np.random.Generator) -> Array:
         """Return the data themselves: single absorbers are not drawn again."""
