@@ -91,15 +91,18 @@ def _draw_trace(axes: Axes, inputs: FigureInputs, index: int) -> None:
         colour = COLOURS[number % len(COLOURS)]
         axes.fill_between(steps, lo, hi, color=colour, alpha=0.2, linewidth=0.0)
         axes.plot(steps, median, color=colour, linewidth=0.7, label=f"ensemble {result.index}")
-    axes.set_ylabel(_label(inputs.fit.setting.distribution.names[index]))
+    axes.set_ylabel(_label(inputs.fit.prior.names[index]))
     lo, hi = axes.get_ylim()
     axes.set_ylim(lo, hi + 0.2 * (hi - lo))
 
 
 def _label(name: str) -> str:
-    kind, _, column = name.rstrip("]").partition("[")
-    symbol = r"\log f" if kind == "log_f" else r"\gamma"
-    return rf"${symbol}_{{{float(column):g}}}$" if column else name
+    kind, _, of = name.rstrip("]").partition("[")
+    symbol = {"log_f": r"\log f", "evolution": r"\gamma"}.get(kind)
+    if symbol is None:
+        return f"{kind} {of}".replace("_", " ").strip()
+    column, _, segment = of.partition(", ")
+    return rf"${symbol}_{{{float(column):g}{', ' + segment if segment else ''}}}$"
 
 
 def _parameter_axis(axes: Axes, parameters: Sequence[dict[str, Any]]) -> Array:
