@@ -47,13 +47,16 @@ class Points:
         ``ln f = expanded @ basis``, but for the form of high columns.
     high : ndarray of int, shape (n_high,)
         Points above the join of spline and form.
-    log_nhi : ndarray, shape (n_high,) [dex of cm^-2]
-        Their columns.
+    log_nhi : ndarray, shape (n_columns,) [dex of cm^-2]
+        Their columns, each once: many points share one at different redshifts.
+    column : ndarray of int, shape (n_high,)
+        Which of them each point has.
     """
 
     basis: Array
     high: NDArray[np.int64]
     log_nhi: Array
+    column: NDArray[np.int64]
 
 
 @dataclass(frozen=True)
@@ -218,7 +221,8 @@ class ColumnDistribution:
         log_nhi = np.asarray(log_nhi, dtype=float)
         high = np.flatnonzero(log_nhi > self.pivots[-1]) if self.form else np.empty(0, np.int64)
         basis = np.ascontiguousarray(self.basis(log_nhi, z))
-        return Points(basis, high, log_nhi[high])
+        columns, which = np.unique(log_nhi[high], return_inverse=True)
+        return Points(basis, high, columns, which)
 
     def ln_f(self, expanded: Array, points: Points) -> Array:
         """Return ln f at prepared points.
@@ -242,7 +246,8 @@ class ColumnDistribution:
         """Return what the form adds to ln f at its own points, shape (n, n_high)."""
         assert self.high_form is not None
         parameters = expanded[:, expanded.shape[1] - self.shape[2] :]
-        return self.high_form.ln_shape(parameters, points.log_nhi, self.pivots[-1])
+        shape = self.high_form.ln_shape(parameters, points.log_nhi, self.pivots[-1])
+        return shape[:, points.column]
 
     def log_f(self, theta: ArrayLike, log_nhi: ArrayLike, z: ArrayLike) -> Array:
         """Return log10 f(N, X, z).

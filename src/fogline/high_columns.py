@@ -74,7 +74,8 @@ class GammaFunction:
     def ln_shape(self, parameters: Array, log_nhi: Array, join: float) -> Array:
         """Return ln f over its value at the join."""
         slope, log_nc = parameters[:, 0, None], parameters[:, 1, None]
-        cut_off = 10.0 ** (log_nhi - log_nc) - 10.0 ** (join - log_nc)
+        # N / N_c as a product: one power a vector and one a point, not one for each pair.
+        cut_off = (10.0**log_nhi - 10.0**join) * 10.0**-log_nc
         return np.asarray(-slope * LN10 * (log_nhi - join) - cut_off)
 
 

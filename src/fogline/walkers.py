@@ -74,11 +74,15 @@ class WalkerResponse:
             blocks.append((*single, scale))
         return blocks
 
-    @cached_property
-    def _shapes(self) -> list[Array]:
-        """What the form of high columns adds to ln f at the reference, for every block."""
+    def _shape(self, expanded: Array, block: int) -> Single:
+        """Return what the form of high columns adds to ln(f/f_0) at the columns of a block."""
         distribution = self.response.distribution
-        return [distribution.ln_shape(self._expanded[None], p) for p in self.response.points]
+        form, n_shape = distribution.high_form, distribution.shape[2]
+        assert form is not None
+        now, then = expanded[:, -n_shape:], self._expanded[None, -n_shape:]
+        columns, join = self.response.points[block].log_nhi, distribution.pivots[-1]
+        shift = form.ln_shape(now, columns, join) - form.ln_shape(then, columns, join)
+        return np.maximum(shift, LEAST_LN_RATIO).astype(np.float32)
 
     @cached_property
     def _stretch(self) -> float:
@@ -146,8 +150,8 @@ class WalkerResponse:
             ratio = single @ basis
             if response.distribution.form:
                 points = response.points[i]
-                shape = response.distribution.ln_shape(expanded, points) - self._shapes[i]
-                ratio[:, points.high] += np.maximum(shape, LEAST_LN_RATIO)
+                shape = self._shape(expanded, i)
+                ratio[:, points.high] += shape[:, points.column]
             np.exp(ratio, out=ratio)
             raw = segmented(ratio, weights, block.segments)
             raw = mixed(raw * scale, block, mix)

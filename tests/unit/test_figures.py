@@ -709,6 +709,17 @@ def test_comparison_states_shifts_in_units_of_both_errors(study: FigureInputs) -
     assert "not a significance" in table.meta["definition"]
 
 
+def test_comparison_holds_the_evidences(study: FigureInputs) -> None:
+    derived = {name: study.tables[name] for name in DERIVED_TABLES}
+    evidences = {"joint": (-10.0, 0.1), "other": (-12.5, 0.2)}
+    table = compare({"joint": derived, "other": derived}, evidences)
+    (row,) = table[table["quantity"] == "ln_evidence"]
+    assert row["analysis"] == "other"
+    assert (row["median"], row["reference_median"]) == (-12.5, -10.0)
+    assert (row["lo68"], row["hi68"]) == (-12.7, -12.3)
+    assert np.isnan(row["shift_sigma"])
+
+
 def test_comparison_of_what_is_beyond_reach_has_no_shift(study: FigureInputs) -> None:
     derived = {name: study.tables[name] for name in DERIVED_TABLES}
     beyond = shifted(derived, 1.0)

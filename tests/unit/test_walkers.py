@@ -1,5 +1,6 @@
 """Single precision about a reference curve against double precision."""
 
+import dataclasses
 from pathlib import Path
 
 import numpy as np
@@ -7,7 +8,14 @@ import pytest
 from numpy.testing import assert_allclose
 
 from fogline import build_fit, load_config, read_inputs
+from fogline.config_settings import HIGH_COLUMN_PRIORS
+from fogline.distribution import ColumnDistribution
+from fogline.priors import Prior
+from fogline.quantities import Setting
+from fogline.response import build_response
+from fogline.settings import HighColumnSettings
 from fogline.walkers import WalkerResponse
+from small_study import MODEL, SETTING, empty_datasets
 
 PROJECT = Path(__file__).parents[2]
 TRUTH = np.array(
@@ -87,3 +95,19 @@ def test_everything_in_range_stays_finite(posterior):
     assert len(kept) > 50
     with np.errstate(all="ignore"):
         assert not np.isnan(posterior.walkers.predict(kept)).any()
+
+
+@pytest.mark.parametrize("form", HIGH_COLUMN_PRIORS)
+def test_forms_of_high_columns_agree_with_double_precision(form):
+    priors = tuple(HIGH_COLUMN_PRIORS[form].values())
+    model = dataclasses.replace(
+        MODEL, pivots=MODEL.pivots[:7], high_column=HighColumnSettings(form, 22.5, priors)
+    )
+    distribution = ColumnDistribution.from_settings(model)
+    setting = Setting(distribution, SETTING.cosmology, model.doppler)
+    response = build_response(empty_datasets(), setting)
+    prior = Prior(model)
+    theta = prior.to_parameters(0.5 * np.random.default_rng(5).normal(size=(100, prior.n_dim)))
+    walkers = WalkerResponse(response, prior.to_parameters(np.zeros((1, prior.n_dim)))[0])
+    assert walkers.in_range(theta).all()
+    assert_allclose(walkers.predict(theta), response.predict(theta), rtol=2e-5)
