@@ -81,6 +81,8 @@ def check_meta(raw: RawTable, spec: FileSpec, counts: bool, faults: list[Fault])
     meta["likelihood"] = check.likelihood(meta, counts)
     if counts:
         check.none_of(NOT_FOR_COUNTS, "has no effect on counts, which are Poisson")
+    if spec.absorbers:
+        check.none_of(NOT_FOR_COUNTS, "has no effect on single absorbers")
     return meta
 
 

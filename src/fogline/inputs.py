@@ -26,10 +26,10 @@ def with_nuisances(datasets: list[DataSet], analysis: AnalysisSettings) -> list[
         Where the config gives counts a scatter or a Student-t.
     """
     faults = [
-        Fault(data.path, 1, f"{key} in the config's nuisances has no effect on counts")
+        Fault(data.path, 1, f"{key} in the config's nuisances has no effect on counts or lists")
         for data in datasets
         for key in analysis.nuisances.get(data.name, {})
-        if data.counts and key in NOT_FOR_COUNTS
+        if (data.counts or data.role is not None) and key in NOT_FOR_COUNTS
     ]
     if faults:
         raise InputError(faults)

@@ -193,6 +193,7 @@ BAD = [
     ({"survey_path": "nowhere.ecsv"}, {}, "survey_path names 'nowhere.ecsv', but there is no"),
     ({"survey_path": "drawn.ecsv"}, {}, "must be sightlines or sensitivity"),
     ({"ends_at_tau": 2.0}, {}, "ends_at_tau needs a column 'sightline'"),
+    ({"student_dof": 4}, {}, "student_dof has no effect on single absorbers"),
     ({"log_nhi_min": 21.0}, {}, "log_nhi is 20.8, must be within the range that the list holds"),
     ({}, {"z": [3.4]}, "z is 3.4, must be on the survey path, 2.2 to 3.2"),
 ]

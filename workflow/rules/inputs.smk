@@ -11,7 +11,7 @@ rule build_response:
     log:
         "logs/build_response/{analysis}.log",
     resources:
-        mem_mb=600,
+        mem_mb=1000,
         runtime=10,
     params:
         model=lambda wildcards: settings_hash(
