@@ -14,7 +14,7 @@ from test_accuracy import FEWER, RTOL, setting_of, truths
 
 from fogline.absorber_files import Listed, _rows_of
 from fogline.absorbers.errors import below, density, representative, selected
-from fogline.absorbers.path import coverage, from_sensitivity, from_sightlines
+from fogline.absorbers.path import PATH_NODES, coverage, from_sensitivity, from_sightlines
 from fogline.absorbers.reduction import reduce_list
 from fogline.datasets import EXPOSURE, INTENSITY, SHOWN, hypothetical
 from fogline.likelihood import Likelihood
@@ -167,7 +167,7 @@ def test_path_of_sightlines_is_exact_for_polynomials():
     start = rng.uniform(2.0, 3.5, 200)
     end = start + rng.uniform(0.05, 1.2, 200)
     z, w = from_sightlines(start, end)
-    for k in range(7):
+    for k in range(2 * PATH_NODES):
         exact = ((end ** (k + 1) - start ** (k + 1)) / (k + 1)).sum()
         assert w @ z**k == pytest.approx(exact, rel=1e-10)
     assert w.sum() == pytest.approx((end - start).sum(), rel=1e-12)
@@ -177,9 +177,23 @@ def test_tabulated_sensitivity_is_the_same_path():
     z = np.array([2.0, 2.5, 3.0, 3.6])
     g = np.array([0.0, 100.0, 80.0, 0.0])
     at, w = from_sensitivity(z, g)
-    for k in range(6):
+    for k in range(2 * PATH_NODES):
         exact = quad(lambda x, k=k: np.interp(x, z, g) * x**k, 2.0, 3.6, points=[2.5, 3.0])[0]
         assert w @ at**k == pytest.approx(exact, rel=1e-9)
+
+
+def test_two_short_sightlines_far_apart_need_no_more_nodes():
+    start = np.array([2.0, 4.0])
+    z, w = from_sightlines(start, start + 1e-7)
+    assert (z >= 2.0 - 1e-9).all()
+    assert (z <= 4.0 + 1e-6).all()
+    assert w @ (1.0 + z) ** 6 == pytest.approx(1e-7 * (3.0**6 + 5.0**6), rel=1e-6)
+
+
+def test_steep_evolution_over_the_longest_path():
+    z, w = from_sightlines(np.array([1.8]), np.array([5.2]))
+    exact = (6.2**7 - 2.8**7) / 7.0
+    assert w @ (1.0 + z) ** 6 == pytest.approx(exact, rel=1e-5)
 
 
 def test_coverage_counts_sightlines():

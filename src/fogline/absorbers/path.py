@@ -1,9 +1,11 @@
 """Survey paths: what was searched, as a few weighted redshifts.
 
 A list's expected number is ∫ g(z) h(z) dz, g the number of sightlines that cover z and h smooth.
-With Chebyshev nodes z_m over the whole path, ∫ g h dz = Σ_m w_m h(z_m) exactly for polynomials h of
-their degree, whatever g is; the weights are found from the moments of g, once, for any number of
-sightlines.
+The nodes z_m and weights w_m of Gauss's quadrature for the measure g(z) dz make Σ_m w_m h(z_m)
+exact for polynomials h up to degree 2n - 1, whatever g is. They follow from the moments of g alone,
+once, for any number of sightlines: with Chebyshev polynomials T_i, the matrices M = ⟨T_i, T_j⟩ and
+X = ⟨x T_i, T_j⟩ under g hold sums of such moments, and X v = λ M v has the nodes as eigenvalues
+(Golub and Welsch 1969, with modified moments).
 """
 
 from __future__ import annotations
@@ -14,14 +16,19 @@ import numpy as np
 from astropy.table import Table
 from numpy.polynomial import chebyshev
 from numpy.typing import NDArray
+from scipy.linalg import eigh
 
 Array = NDArray[np.float64]
 
 STEP_WIDTH: Final = 1e-6
 """Half the redshift over which a tabulated number of sightlines changes, at most."""
 
-PATH_NODES: Final = 8
-"""Redshifts that stand for a path: over one survey f dX/dz is a polynomial of that degree."""
+PATH_NODES: Final = 5
+"""Redshifts that stand for a path. From z = 1.8 to 5.2 they are good to 1e-5 for (1+z)^6."""
+
+N_MOMENTS: Final = 2 * PATH_NODES
+WORST_CONDITION: Final = 1e10
+"""Of M, beyond which the path has not as many moments of its own: fewer nodes hold them all."""
 
 
 def from_sightlines(z_start: Array, z_end: Array) -> tuple[Array, Array]:
@@ -33,18 +40,18 @@ def from_sightlines(z_start: Array, z_end: Array) -> tuple[Array, Array]:
 
     Returns
     -------
-    z, weights : ndarray, shape (PATH_NODES,)
+    z, weights : ndarray, shape (n_nodes,)
         The weights add up to the whole path.
     """
     lo, hi = float(z_start.min()), float(z_end.max())
     half, middle = 0.5 * (hi - lo), 0.5 * (hi + lo)
     to_unit = [(z - middle) / half for z in (z_start, z_end)]
     moments = []
-    for k in range(PATH_NODES):
-        integral = chebyshev.chebint(np.eye(PATH_NODES)[k])
+    for k in range(N_MOMENTS):
+        integral = chebyshev.chebint(np.eye(N_MOMENTS)[k])
         start, end = (chebyshev.chebval(x, integral).sum() for x in to_unit)
         moments.append(half * (end - start))
-    return _weights(lo, hi, np.array(moments))
+    return _gauss(lo, hi, np.array(moments))
 
 
 def from_sensitivity(z: Array, g: Array) -> tuple[Array, Array]:
@@ -56,22 +63,30 @@ def from_sensitivity(z: Array, g: Array) -> tuple[Array, Array]:
 
     Returns
     -------
-    z, weights : ndarray, shape (PATH_NODES,)
+    z, weights : ndarray, shape (n_nodes,)
     """
-    nodes, weights = np.polynomial.legendre.leggauss(PATH_NODES)
+    nodes, weights = np.polynomial.legendre.leggauss(PATH_NODES + 1)
     half = 0.5 * np.diff(z)
     at = z[:-1, None] + half[:, None] * (1.0 + nodes)
     measure = half[:, None] * weights * np.interp(at, z, g)
     lo, hi = float(z[0]), float(z[-1])
     x = (2.0 * at - lo - hi) / (hi - lo)
-    moments = np.einsum("ij,ijk->k", measure, chebyshev.chebvander(x, PATH_NODES - 1))
-    return _weights(lo, hi, moments)
+    moments = np.einsum("ij,ijk->k", measure, chebyshev.chebvander(x, N_MOMENTS - 1))
+    return _gauss(lo, hi, moments)
 
 
-def _weights(lo: float, hi: float, moments: Any) -> tuple[Array, Array]:
-    x = chebyshev.chebpts1(PATH_NODES)
-    weights = np.linalg.solve(chebyshev.chebvander(x, PATH_NODES - 1).T, moments)
-    weights = np.asarray(weights, dtype=float)
+def _gauss(lo: float, hi: float, moments: Any) -> tuple[Array, Array]:
+    """Return nodes and weights from the moments of T_0 ... on an interval."""
+    for n_nodes in range(PATH_NODES, 0, -1):
+        i, j = np.indices((n_nodes, n_nodes))
+        product = lambda k, l: 0.5 * (moments[k + l] + moments[abs(k - l)])  # noqa: E731, E741
+        gram = product(i, j)
+        if np.linalg.cond(gram) < WORST_CONDITION:
+            break
+    times_x = 0.5 * (product(i + 1, j) + product(abs(i - 1), j))
+    x, vectors = eigh(times_x, gram)
+    # 1 = T_0 is Σ_m (v_m · M e_0) v_m, and its share of each node is the weight.
+    weights = (vectors.T @ gram[:, 0]) ** 2
     return 0.5 * (lo + hi) + 0.5 * (hi - lo) * x, weights
 
 

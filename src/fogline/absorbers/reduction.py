@@ -22,7 +22,7 @@ Array = NDArray[np.float64]
 COLUMN_STEP: Final = 0.5
 """Distance of cells in log N, in units of the smaller error."""
 
-REDSHIFT_STEP: Final = 0.15
+REDSHIFT_STEP: Final = 0.25
 """Distance of cells in ln(1+z), at most."""
 
 ERROR_NODES: Final = 4

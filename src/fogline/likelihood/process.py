@@ -27,16 +27,20 @@ class ProcessRows:
     rows: Indices
 
     @cached_property
-    def _is_cell(self) -> Array:
-        return (self.data.role[self.rows] == INTENSITY).astype(float)
+    def _cells(self) -> tuple[Indices, Indices]:
+        """Where among these rows the cells are, and where Λ is."""
+        is_cell = self.data.role[self.rows] == INTENSITY
+        return np.flatnonzero(is_cell), np.flatnonzero(~is_cell)
 
     def ln_rows(self, model: Array, scatter: Array | None) -> Array:
         """Return n ln λ of cells, and -Λ, shape (n, k)."""
-        expected = model[:, self.rows]
-        number = self.data.observed[self.rows] * self._is_cell
+        cells, totals = self._cells
+        out = np.empty((len(model), len(self.rows)))
+        out[:, totals] = -model[:, self.rows[totals]]
         # Some cells hold a negative number: an intensity of zero must not make inf - inf of them.
-        ln_intensity = np.log(np.maximum(expected, LEAST_INTENSITY))
-        return np.asarray(number * ln_intensity - (1.0 - self._is_cell) * expected)
+        intensity = np.maximum(model[:, self.rows[cells]], LEAST_INTENSITY)
+        out[:, cells] = self.data.observed[self.rows[cells]] * np.log(intensity)
+        return out
 
     def replicate(self, model: Array, scatter: Array | None, rng: np.random.Generator) -> Array:
         """Return the data themselves: single absorbers are not drawn again."""

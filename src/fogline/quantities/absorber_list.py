@@ -38,10 +38,10 @@ from fogline.quantities.spec import FileSpec, MetaKey, ValueColumn, column_key
 
 Array = NDArray[np.float64]
 
-REACH: Final = 6.0
+REACH: Final = 5.0
 """Errors beyond which a kernel is nothing."""
 
-PANEL: Final = 2.5
+PANEL: Final = 3.5
 """Width of quadrature panels under a kernel, in units of the smallest error."""
 
 SPEC: Final = FileSpec(
