@@ -12,6 +12,9 @@ from fogline.text_files import read_text
 
 ColumnRange = tuple[float | None, float | None]
 
+SCATTER = 2.0
+"""Errors below the lowest measured column down to which a list needs the model."""
+
 # Limits such as log N(tau = 2) carry rounding; a pivot given to that precision is meant.
 _ROUNDING = 1e-9
 
@@ -35,6 +38,11 @@ def column_ranges(dataset: DataSet) -> ColumnRange:
     low, high = meta.get("log_nhi_min"), meta.get("log_nhi_max")
     if meta.get("tau_min") is not None:
         low = log_nhi_at_tau(float(meta["tau_min"]))
+    if dataset.quantity == "absorber_list" and low is not None:
+        # Weaker absorbers that errors scatter into the range are part of the prediction.
+        low -= SCATTER * float(
+            max(dataset.extras["errors_lo"].max(), dataset.extras["errors_hi"].max())
+        )
     return None if low is None else float(low), None if high is None else float(high)
 
 

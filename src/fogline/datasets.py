@@ -102,6 +102,12 @@ class DataSet:
         return (self.role == MEASURED) | (self.role == SHOWN)
 
     @property
+    def column_bins(self) -> Array:
+        """Column bins in which absorbers were counted, shape (n_bins, 2) [dex of cm^-2]."""
+        bins = np.stack([self.log_nhi_lo, self.log_nhi_hi], axis=1)[self.visible]
+        return bins[np.isfinite(bins).all(axis=1)]
+
+    @property
     def n_listed(self) -> int:
         """Number of rows, or absorbers, in the file."""
         return int(self.extras["n_absorbers"]) if "n_absorbers" in self.extras else self.n_rows

@@ -24,8 +24,8 @@ from fogline.tables import read_table, write_table
 Array = NDArray[np.float64]
 
 
-def derive_tables(fit: Fit, posterior: str | Path, directory: str | Path) -> None:
-    """Write every derived table with bands.
+def derive_tables(fit: Fit, posterior: str | Path, directory: str | Path) -> list[str]:
+    """Write every derived table with bands; return what to note of them, a line each.
 
     Parameters
     ----------
@@ -39,7 +39,7 @@ def derive_tables(fit: Fit, posterior: str | Path, directory: str | Path) -> Non
     theta = read_draws(posterior, derive.draws)
     meta = fit.table_meta() | {"draws": len(theta)}
     draws = make_draws(theta, fit.setting, fit.analysis, highest_column(fit.response.datasets))
-    write_derived(draws, directory, with_bands=True, **meta)
+    return write_derived(draws, directory, with_bands=True, **meta)
 
 
 def make_draws(
@@ -69,9 +69,9 @@ def make_draws(
 
 
 def highest_column(datasets: Sequence[DataSet]) -> float | None:
-    """Return the upper end of the columns that data sets counted in bins; None without such."""
-    ends = [data.log_nhi_hi.max() for data in datasets if data.quantity == "column_distribution"]
-    return float(max(ends)) if ends else None
+    """Return the upper end of the columns that data sets counted; None where none did."""
+    ends = [float(data.column_bins.max()) for data in datasets if data.column_bins.size]
+    return max(ends, default=None)
 
 
 def export_results(

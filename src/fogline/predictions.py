@@ -44,8 +44,8 @@ def predict_table(analysis: AnalysisSettings, datasets: list[DataSet], point: Ar
     return table
 
 
-def write_derived_at(analysis: AnalysisSettings, point: Array, directory: str | Path) -> None:
-    """Write the derived tables at given parameters, without bands.
+def write_derived_at(analysis: AnalysisSettings, point: Array, directory: str | Path) -> list[str]:
+    """Write the derived tables at given parameters, without bands; return notes, a line each.
 
     Parameters
     ----------
@@ -54,4 +54,4 @@ def write_derived_at(analysis: AnalysisSettings, point: Array, directory: str | 
     directory : path-like
     """
     draws = make_draws(point[None], setting_of(analysis), analysis)
-    write_derived(draws, directory, with_bands=False, analysis=analysis.name)
+    return write_derived(draws, directory, with_bands=False, analysis=analysis.name)

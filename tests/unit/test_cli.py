@@ -18,7 +18,7 @@ from fogline.config import load_config
 from fogline.faults import InputError
 from fogline.points import read_point
 from fogline.quantities import FILE_SPECS
-from fogline.side_tables import SIDE_TABLES, side_template
+from fogline.side_tables import SIDE_TABLES, read_side_table, side_template
 from fogline.templates import template
 
 CONFIG = """\
@@ -72,6 +72,32 @@ def at_point(command, analysis="joint", point="point.yaml", config="config/confi
     return [command, "--config", config, "--analysis", analysis, "--point", point]
 
 
+# path
+
+
+def test_path_counts_the_sightlines_that_cover_a_redshift(study, capsys):
+    rows = "# %ECSV 1.0\n# ---\n# datatype:\n# - {name: z_start, datatype: float64}\n"
+    rows += "# - {name: z_end, datatype: float64}\n# meta: {kind: sightlines, source: invented}\n"
+    rows += "# schema: astropy-2.0\nz_start z_end\n2.0 3.0\n2.5 3.5\n2.5 2.75\n"
+    (study / "lines.ecsv").write_text(rows, encoding="utf-8")
+    assert main(["path", "lines.ecsv", "--output", "g.ecsv"]) == 0
+    g = read_side_table(study / "g.ecsv", "sensitivity")
+    covered = np.interp([2.2, 2.6, 2.8, 3.2], g["z"], g["g"])
+    np.testing.assert_allclose(covered, [1.0, 3.0, 2.0, 1.0])
+    assert np.trapezoid(g["g"], g["z"]) == pytest.approx(1.0 + 1.0 + 0.25, rel=1e-6)
+    capsys.readouterr()
+    assert main(["path", "lines.ecsv"]) == 0
+    assert Table.read(capsys.readouterr().out, format="ascii.ecsv").meta["kind"] == "sensitivity"
+
+
+def test_path_refuses_what_is_no_list_of_sightlines(study, capsys):
+    (study / "lines.ecsv").write_text(side_template("sensitivity"), encoding="utf-8")
+    (line,) = fails(capsys, "path", "lines.ecsv", "--output", "g.ecsv")
+    assert line.startswith("lines.ecsv:")
+    assert "sightlines" in line
+    assert not (study / "g.ecsv").exists()
+
+
 # check
 
 
@@ -114,6 +140,15 @@ def test_check_compares_columns_with_pivots(study, capsys):
     files = ["data/lya_opacity.ecsv:", "data/lyman_series_opacity.ecsv:"]
     assert all(line.startswith(file) for line, file in zip(lines, files, strict=True))
     assert all("12 to 17.2" in line and "13 to 22.5" in line for line in lines)
+
+
+def test_check_of_a_list_needs_columns_that_scatter_into_it(study, capsys):
+    config = study / "config" / "config.yaml"
+    narrow = CONFIG.replace("[data/column_distribution.ecsv]", "[data/absorber_list.ecsv]")
+    config.write_text(narrow.replace("pivots: [20.0, 20.3, 22.5]", "pivots: [20.3, 21.0, 22.5]"))
+    (line,) = fails(capsys, "check")
+    assert line.startswith("data/absorber_list.ecsv:")
+    assert "needs columns log N_HI = 20.06 to" in line
 
 
 def test_check_of_a_further_file_against_the_config(study, capsys):
@@ -190,10 +225,12 @@ def test_predict_writes_every_row(study, capsys):
     np.testing.assert_allclose(printed["predicted"], table["predicted"], rtol=1e-6)
 
 
-def test_derive_writes_tables(study):
+def test_derive_writes_tables(study, capsys):
     assert main([*at_point("derive"), "--output", "tables"]) == 0
     names = {path.stem for path in (study / "tables").iterdir()}
     assert {"column_distribution", "incidence", "hi_density", "mean_free_path"} <= names
+    # Where the local-source relation fails is printed, not only written.
+    assert "ionizing_background: given:" in capsys.readouterr().out
 
 
 @pytest.mark.parametrize("command", ["predict", "derive"])

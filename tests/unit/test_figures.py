@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import copy
 import json
 from collections.abc import Mapping
 from dataclasses import replace
@@ -17,6 +18,7 @@ from matplotlib.lines import Line2D
 from matplotlib.patches import Rectangle
 from matplotlib.text import Text
 from numpy.testing import assert_allclose
+from scipy.integrate import quad
 from scipy.optimize import least_squares
 
 from fogline import plan
@@ -32,9 +34,9 @@ from fogline.figures.axis import unmeasured_columns
 from fogline.figures.column_distribution import to_log_f
 from fogline.figures.data_points import along_columns, along_z, poisson_interval
 from fogline.figures.lya_opacity import to_tau
+from fogline.inputs import with_nuisances
 from fogline.mixture import StudentMixture
 from fogline.predictive import check_predictive, predictive_table
-from fogline.priors import Prior
 from fogline.response_file import Fit, build_fit
 from fogline.settings import AnalysisSettings, analysis_from_plain
 from fogline.tables import curve_table, read_table, write_table
@@ -224,9 +226,11 @@ def write_study(folder: Path, values: Mapping[str, np.ndarray] | None = None) ->
     return paths
 
 
-def invented_values(fit: Fit, rng: np.random.Generator) -> dict[str, np.ndarray]:
+def invented_values(
+    fit: Fit, rng: np.random.Generator, truth: np.ndarray = TRUTH
+) -> dict[str, np.ndarray]:
     """Draw data from the truth."""
-    predicted = fit.response.predict(TRUTH)
+    predicted = fit.response.predict(truth)
     out = {}
     for data, rows in zip(fit.response.datasets, fit.response.slices, strict=True):
         mean, error = predicted[rows], study_files()[data.name][2]
@@ -237,25 +241,29 @@ def invented_values(fit: Fit, rng: np.random.Generator) -> dict[str, np.ndarray]
     return out
 
 
-def laplace(fit: Fit) -> tuple[np.ndarray, np.ndarray]:
+def laplace(fit: Fit, truth: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     """Return centre and covariance of the posterior near the truth, in unit-normal coordinates."""
-    prior, posterior = Prior(fit.analysis.model), fit.posterior
+    posterior = fit.posterior
+    prior = posterior.prior
 
     def pulls(x: np.ndarray) -> np.ndarray:
         theta = prior.to_parameters(x[None])
         predicted = fit.response.predict(theta)
+        nuisances = theta[:, fit.response.n_parameters :]
         seen = posterior.likelihood.observed
-        data = posterior.likelihood.standardize(seen, predicted)[0]
+        data = posterior.likelihood.standardize(seen, predicted, nuisances)[0]
         return np.concatenate([x, np.clip(np.nan_to_num(data), -9.0, 9.0)])
 
-    start = least_squares(lambda x: prior.to_parameters(x[None])[0] - TRUTH, np.zeros(prior.n_dim))
+    start = least_squares(lambda x: prior.to_parameters(x[None])[0] - truth, np.zeros(prior.n_dim))
     found = least_squares(pulls, start.x)
     return found.x, np.linalg.inv(found.jac.T @ found.jac)
 
 
-def fake_ensembles(fit: Fit, rng: np.random.Generator, n_steps: int = 80) -> list[EnsembleResult]:
+def fake_ensembles(
+    fit: Fit, rng: np.random.Generator, truth: np.ndarray, n_steps: int = 80
+) -> list[EnsembleResult]:
     """Return independent draws of the Laplace approximation, dressed as ensembles."""
-    centre, covariance = laplace(fit)
+    centre, covariance = laplace(fit, truth)
     walkers, n_dim = fit.analysis.sampler.walkers, len(centre)
     factor, sd = np.linalg.cholesky(covariance), np.sqrt(np.diagonal(covariance))
     importance = Importance(-10.0, 0.01, 0.5, 0.3, 9999, centre, sd, 0.05 * sd, 0.05 * sd / sd)
@@ -281,16 +289,23 @@ def fake_ensembles(fit: Fit, rng: np.random.Generator, n_steps: int = 80) -> lis
     ]
 
 
-def fake_study(folder: Path, n_draws: int = 200, **derive: Any) -> FigureInputs:
+def fake_study(
+    folder: Path,
+    plain: Mapping[str, Any] = PLAIN_ANALYSIS,
+    truth: np.ndarray = TRUTH,
+    n_draws: int = 200,
+    **derive: Any,
+) -> FigureInputs:
     """Return figure inputs of invented data, with real tables and a Laplace posterior."""
     rng = np.random.default_rng(20)
-    analysis: AnalysisSettings = analysis_from_plain(PLAIN_ANALYSIS)
+    analysis: AnalysisSettings = analysis_from_plain(plain)
     analysis = replace(analysis, derive=replace(analysis.derive, **derive))
     fit = build_fit(analysis, read_constraint_files(write_study(folder)))
-    datasets = read_constraint_files(write_study(folder, invented_values(fit, rng)))
+    files = write_study(folder, invented_values(fit, rng, truth))
+    datasets = with_nuisances(read_constraint_files(files), analysis)
     fit = build_fit(analysis, datasets)
-    prior = Prior(analysis.model)
-    ensembles = fake_ensembles(fit, rng)
+    prior = fit.posterior.prior
+    ensembles = fake_ensembles(fit, rng, truth)
     samples = np.concatenate([e.samples for e in ensembles])
     theta = prior.to_parameters(rng.choice(samples, n_draws, replace=False))
     draws = Draws(theta, fit.setting, analysis.derive)
@@ -304,7 +319,7 @@ def fake_study(folder: Path, n_draws: int = 200, **derive: Any) -> FigureInputs:
     for name, table in tables.items():
         write_table(table, folder / "tables" / f"{name}.ecsv")
     tables = {name: read_table(folder / "tables" / f"{name}.ecsv") for name in tables}
-    names = fit.setting.distribution.names
+    names = prior.names
     report = assess(ensembles, analysis.sampler, names, to_parameters=prior.to_parameters)
     return FigureInputs(
         fit=fit,
@@ -360,8 +375,8 @@ def test_every_figure_is_written_in_both_forms(
 
 
 def test_the_same_figure_gives_the_same_files(study: FigureInputs, tmp_path: Path) -> None:
-    for copy in ("a", "b"):
-        save(FIGURES["lya_opacity"](study), tmp_path / copy)
+    for name in ("a", "b"):
+        save(FIGURES["lya_opacity"](study), tmp_path / name)
     for form in ("pdf", "png"):
         first, second = ((tmp_path / f"{copy}.{form}").read_bytes() for copy in ("a", "b"))
         assert first == second
@@ -669,6 +684,69 @@ def test_no_data_of_a_quantity_leaves_its_curve(study: FigureInputs, tmp_path: P
     bare = replace(study, fit=replace(study.fit, response=few))
     for name in ("lya_opacity", "lls_incidence", "mean_free_path", "hi_density"):
         save(FIGURES[name](bare), tmp_path / name)
+
+
+def test_listed_absorbers_stand_as_counts_over_their_path(
+    study: FigureInputs, tmp_path: Path
+) -> None:
+    rows = Table(
+        {"z": [3.1, 3.4, 3.5, 3.9], "log_nhi": [20.35, 20.5, 21.1, 22.1], "err": [0.1] * 4}
+    )
+    rows.meta = {
+        "quantity": "absorber_list",
+        "source": "invented",
+        "survey_path": "path.ecsv",
+        "log_nhi_min": 20.3,
+        "log_nhi_max": 22.3,
+    }
+    rows.write(tmp_path / "listed.ecsv", format="ascii.ecsv")
+    path = Table({"z_start": [3.0, 3.2], "z_end": [4.0, 3.8]})
+    path.meta = {"kind": "sightlines", "source": "invented"}
+    path.write(tmp_path / "path.ecsv", format="ascii.ecsv")
+    datasets = [*study.fit.response.datasets, *read_constraint_files([tmp_path / "listed.ecsv"])]
+    fit = build_fit(study.fit.analysis, datasets)
+    listed = replace(study, fit=fit)
+    assert_allclose(unmeasured_columns(listed)[-1], (22.3, 22.5))
+    figure = FIGURES["column_distribution"](listed)
+    main, residual = (np.asarray(line.get_xydata()) for line in lines(figure, "data:listed"))
+    # dX/dz of flat ΛCDM (Bahcall & Peebles 1969), integrated along both sightlines.
+    per_z = lambda z: (1.0 + z) ** 2 / np.sqrt(0.3 * (1.0 + z) ** 3 + 0.7)  # noqa: E731
+    path_x = quad(per_z, 3.0, 4.0)[0] + quad(per_z, 3.2, 3.8)[0]
+    assert_allclose(main[:, 0], np.arange(20.4, 22.3, 0.2))
+    counts = np.array([1, 1, 0, 0, 1, 0, 0, 0, 0, 1])
+    some = counts > 0
+    expected = np.log10(
+        counts[some] / path_x / (10.0 ** (main[some, 0] + 0.1) - 10.0 ** (main[some, 0] - 0.1))
+    )
+    assert_allclose(main[some, 1], expected, rtol=1e-6)
+    predicted = np.median(fit.response.predict(study.theta)[:, -10:], axis=0)
+    assert_allclose(residual[some, 1], np.log10(counts[some] / predicted[some]), atol=2e-3)
+
+
+def test_every_figure_of_a_wider_model(tmp_path: Path) -> None:
+    plain = copy.deepcopy(PLAIN_ANALYSIS)
+    model = plain["model"]
+    model["pivots"] = model["pivots"][:8]
+    model["evolution"]["breaks"] = [3.2]
+    model["high_column"] = {
+        "form": "gamma",
+        "top": 22.5,
+        "priors": [
+            {"dist": "norm", "loc": 1.5, "scale": 0.3},
+            {"dist": "norm", "loc": 21.5, "scale": 0.3},
+        ],
+    }
+    plain["nuisances"] = {"forest_flux": {"scale": {"dist": "norm", "loc": 1.0, "scale": 0.05}}}
+    truth = np.array([*TRUTH[:8], *TRUTH[10:], *TRUTH[10:], 1.6, 21.6, 1.0])
+    wide = fake_study(tmp_path, plain, truth)
+    assert wide.converged, wide.convergence["reasons"]
+    for name, draw in FIGURES.items():
+        save(draw(wide), tmp_path / name)
+    names = wide.fit.posterior.prior.names
+    assert len(FIGURES["corner"](wide).axes) >= len(names) * (len(names) + 1) // 2
+    # The curve goes on through the form, where no pivot stands.
+    figure = FIGURES["column_distribution"](wide)
+    assert figure.axes[0].get_xlim() == (12.0, 22.5)
 
 
 def test_a_free_path_beyond_reach_runs_off_the_axis(study: FigureInputs, tmp_path: Path) -> None:

@@ -24,4 +24,4 @@ def run(options: argparse.Namespace) -> None:
 
     from fogline.predictions import write_derived_at
 
-    write_derived_at(analysis, point.theta, options.output)
+    print("\n".join(write_derived_at(analysis, point.theta, options.output)))

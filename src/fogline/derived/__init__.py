@@ -38,8 +38,10 @@ DERIVED_TABLES: Final[dict[str, DerivedTable]] = {
 """Every derived table by its name."""
 
 
-def write_derived(draws: Draws, directory: str | Path, /, *, with_bands: bool, **meta: Any) -> None:
-    """Write every derived table.
+def write_derived(
+    draws: Draws, directory: str | Path, /, *, with_bands: bool, **meta: Any
+) -> list[str]:
+    """Write every derived table; return ``NAME: note`` of those that have something to note.
 
     Parameters
     ----------
@@ -52,6 +54,7 @@ def write_derived(draws: Draws, directory: str | Path, /, *, with_bands: bool, *
     **meta
         Provenance for the tables' meta.
     """
+    notes = []
     for name, derived in DERIVED_TABLES.items():
         # Bands over sightlines are there for a single parameter vector too.
         banded = with_bands or getattr(derived, "over_sightlines", False)
@@ -59,7 +62,9 @@ def write_derived(draws: Draws, directory: str | Path, /, *, with_bands: bool, *
         table.meta["definition"] = derived.definition
         if hasattr(derived, "note"):
             table.meta["note"] = derived.note(draws)
+            notes.append(f"{name}: {table.meta['note']}")
         write_table(table, Path(directory) / f"{name}.ecsv", **meta)
+    return notes
 
 
 __all__ = ["DERIVED_TABLES", "DerivedTable", "Draws", "write_derived"]

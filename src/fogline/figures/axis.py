@@ -84,11 +84,11 @@ def mark_classes(axes: Axes) -> None:
 
 
 def unmeasured_columns(inputs: FigureInputs) -> list[tuple[float, float]]:
-    """Return column ranges between the pivots that no column-density bin of the data covers."""
+    """Return column ranges between the pivots in which no data set counted absorbers."""
     bins = sorted(
         (float(lo), float(hi))
-        for data in inputs.of_quantity("column_distribution")
-        for lo, hi in zip(data.log_nhi_lo, data.log_nhi_hi, strict=True)
+        for data in inputs.fit.response.datasets
+        for lo, hi in data.column_bins
     )
     first, last = inputs.fit.setting.column_range
     gaps, reached = [], first

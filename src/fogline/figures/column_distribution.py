@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 from typing import Final
 
 import numpy as np
@@ -11,7 +12,7 @@ from matplotlib.figure import Figure
 from matplotlib.ticker import MultipleLocator
 from numpy.typing import NDArray
 
-from fogline.datasets import DataSet
+from fogline.datasets import SHOWN, DataSet
 from fogline.figures.axis import UNMEASURED_NOTE, column_axis, shade_unmeasured
 from fogline.figures.bands import Band, draw_band, rows_at, table_band
 from fogline.figures.conventions import joined, other_cosmology
@@ -28,8 +29,11 @@ from fogline.figures.style import (
 from fogline.quantities import Setting
 
 Array = NDArray[np.float64]
+Counted = tuple[DataSet, Array]
+"""A data set, and the 68% band of its predictions, shape (3, n_rows)."""
 
 QUANTITY: Final = "column_distribution"
+LIST: Final = "absorber_list"
 
 LARGEST_RESIDUAL: Final = 1.2
 """Half height of the residual panel at most [dex]."""
@@ -54,7 +58,7 @@ def draw(inputs: FigureInputs) -> Figure:
     -------
     matplotlib.figure.Figure
     """
-    datasets = inputs.of_quantity(QUANTITY)
+    datasets = _counted(inputs)
     z = _redshift(inputs, datasets)
     rows = rows_at(inputs.tables[QUANTITY], z)
     band = table_band(rows, "log_nhi")
@@ -68,6 +72,38 @@ def draw(inputs: FigureInputs) -> Figure:
     return figure
 
 
+def _counted(inputs: FigureInputs) -> list[Counted]:
+    """Return every data set that counted absorbers by column, with its predictions."""
+    counted: list[Counted] = []
+    for data in inputs.fit.response.datasets:
+        if data.quantity == QUANTITY:
+            counted.append((data, inputs.predicted(data)))
+        elif data.quantity == LIST:
+            bins = data.role == SHOWN
+            counted.append((in_bins(data, inputs.fit.setting), inputs.predicted(data)[:, bins]))
+    return counted
+
+
+def in_bins(data: DataSet, setting: Setting) -> DataSet:
+    """Return the bins of a list of absorbers as counts over the whole path.
+
+    Parameters
+    ----------
+    data : DataSet
+        An absorber list.
+    setting : Setting
+        Gives the absorption distance of the path.
+    """
+    assert data.role is not None
+    rows = np.flatnonzero(data.role == SHOWN)
+    path = data.extras["path_weight"] @ setting.cosmology.dx_dz(data.extras["path_z"])
+    names = ("z_lo", "z_hi", "observed", "err_lo", "err_hi", "limit", "log_nhi_lo", "log_nhi_hi")
+    columns = {name: getattr(data, name)[rows] for name in names}
+    search_path = np.full(len(rows), float(path))
+    meta = {**data.meta, "per": "dX"}
+    return replace(data, **columns, search_path=search_path, counts=True, meta=meta, role=None)
+
+
 def to_log_f(data: DataSet) -> ToDisplay:
     """Return the map from a file's numbers to log10 f: identity but for counts."""
     if not data.counts:
@@ -76,15 +112,15 @@ def to_log_f(data: DataSet) -> ToDisplay:
     return lambda count: np.log10(count / path)
 
 
-def _redshift(inputs: FigureInputs, datasets: list[DataSet]) -> float:
+def _redshift(inputs: FigureInputs, datasets: list[Counted]) -> float:
     """Return the median redshift of the data; the reference redshift where there are none."""
     if not datasets:
         return inputs.fit.setting.distribution.reference_redshift
-    return float(np.median(np.concatenate([data.z for data in datasets])))
+    return float(np.median(np.concatenate([data.z for data, _ in datasets])))
 
 
 def _draw_main(
-    axes: Axes, inputs: FigureInputs, band: Band, datasets: list[DataSet], z: float
+    axes: Axes, inputs: FigureInputs, band: Band, datasets: list[Counted], z: float
 ) -> None:
     styles = dataset_styles(inputs.fit)
     shade_unmeasured(axes, inputs)
@@ -99,7 +135,7 @@ def _draw_main(
         zorder=3,
         label="pivots",
     )
-    for data in datasets:
+    for data, _ in datasets:
         style = styles[data.name]
         label = f"{style.label}, {joined(_particulars(data, inputs.fit.setting))}"
         if data.meta["per"] == "dX":
@@ -117,6 +153,8 @@ def _particulars(data: DataSet, setting: Setting) -> Iterator[str]:
     lo, hi = data.z_lo.min(), data.z_hi.max()
     yield f"$z = {lo:.3g}$" + ("" if lo == hi else f"–${hi:.3g}$")
     yield other_cosmology(data, setting)
+    if data.quantity == LIST:
+        yield "as counted"
     if data.meta["per"] != "dX":
         yield "per d$z$: below only"
 
@@ -126,13 +164,13 @@ def _draw_key(axes: Axes, style: DataStyle, label: str) -> None:
     axes.plot([], [], style.marker, color=style.colour, markersize=4.0, label=label)
 
 
-def _draw_residuals(axes: Axes, inputs: FigureInputs, band: Band, datasets: list[DataSet]) -> None:
+def _draw_residuals(axes: Axes, inputs: FigureInputs, band: Band, datasets: list[Counted]) -> None:
     styles = dataset_styles(inputs.fit)
     shade_unmeasured(axes, inputs)
     draw_band(axes, band.relative())
     reach = [0.2]
-    for data in datasets:
-        predicted = to_log_f(data)(inputs.predicted(data))[1]
+    for data, band_of_data in datasets:
+        predicted = to_log_f(data)(band_of_data)[1]
         points = along_columns(data, _less(to_log_f(data), predicted))
         draw_points(axes, points, styles[data.name])
         ends = np.abs([points.y_lo, points.y_hi])
