@@ -9,6 +9,8 @@ from typing import Final
 import numpy as np
 from astropy.table import Table
 
+from fogline.headlines import COLUMNS, HEADLINES, REDSHIFTS
+
 DEFINITION: Final = (
     "shift_sigma: (median - reference_median) over half the 68% widths of the two analyses added "
     "in quadrature. The analyses share data, so that their errors are correlated: the shift says "
@@ -18,33 +20,6 @@ DEFINITION: Final = (
 
 EVIDENCE: Final = "ln_evidence"
 """Quantity of the rows that hold ln Z."""
-
-REDSHIFTS: Final = (2.5, 3.5, 4.5)
-"""Redshifts of the comparison; each table's nearest is taken."""
-
-COLUMNS: Final = (13.5, 15.0, 16.5, 18.0, 19.5, 20.5, 21.5)
-"""Columns at which log f is compared [dex of cm^-2]."""
-
-
-@dataclass(frozen=True)
-class Headline:
-    """A derived quantity that analyses are compared by."""
-
-    quantity: str
-    table: str
-    prefix: str
-
-
-HEADLINES: Final = (
-    Headline("tau_eff", "lya_opacity", ""),
-    Headline("lx_lls_tau2", "incidence", "lx_lls_tau2_"),
-    Headline("lx_dla", "incidence", "lx_dla_"),
-    Headline("mean_free_path_local", "mean_free_path", "local_"),
-    Headline("mean_free_path_unit_depth", "mean_free_path", "unit_depth_"),
-    Headline("rho_hi", "hi_density", "rho_hi_"),
-)
-"""What is compared along redshift; log f is compared along columns."""
-
 
 DTYPES: Final = {
     "analysis": "U64",
@@ -130,8 +105,9 @@ def _row(analysis: str, reference: str, value: Value, base: Value) -> tuple[obje
 def _values(tables: Mapping[str, Table]) -> Iterator[Value]:
     for headline in HEADLINES:
         table = tables[headline.table]
+        prefix = f"{headline.curve}_" if headline.curve else ""
         for z in REDSHIFTS:
-            yield _value(table[_nearest(table["z"], z)], headline.quantity, headline.prefix)
+            yield _value(table[_nearest(table["z"], z)], headline.quantity, prefix)
     table = tables["column_distribution"]
     reference = table[np.asarray(table["z"]) == table["z"][0]]
     for log_nhi in COLUMNS:

@@ -195,20 +195,25 @@ def _analysis(
     if not missing:
         blocks = _with_defaults(blocks)
         missing.extend(block_faults(blocks, name))
-        missing.extend(_unknown_datasets(blocks["nuisances"], files))
+        missing.extend(_unknown_datasets(blocks, files))
     for place, what in missing:
         faults.add(layers.origin(place) if place else (), what)
     return None if missing else analysis_settings(name, files, blocks)
 
 
-def _unknown_datasets(
-    nuisances: Mapping[str, Any], files: tuple[str, ...]
-) -> Iterator[PlacedFault]:
+def _unknown_datasets(blocks: Mapping[str, Any], files: tuple[str, ...]) -> Iterator[PlacedFault]:
     stems = [os.path.splitext(os.path.basename(path))[0] for path in files]
-    for name in nuisances:
+    named: list[tuple[Place, Any]] = [(("nuisances", name), name) for name in blocks["nuisances"]]
+    for group, members in blocks["checks"]["groups"].items():
+        place: Place = ("checks", "groups", group)
+        if not _NAME.fullmatch(str(group)) or group in stems:
+            what = f"checks.groups: a group is named '{group}', must be letters, digits, '_' and "
+            yield place, f"{what}'-', and not the name of a data set"
+        named += [((*place, i), member) for i, member in enumerate(members)]
+    for place, name in named:
         if name not in stems:
-            what = f"nuisances: the analysis has no data set '{name}'; {nearest(str(name), stems)}"
-            yield ("nuisances", name), what
+            what = f"{place[0]}: the analysis has no data set '{name}'; {nearest(str(name), stems)}"
+            yield place, what
 
 
 def _with_defaults(blocks: Mapping[str, Any]) -> dict[str, Any]:

@@ -7,6 +7,7 @@ from typing import Any, Final
 
 from fogline.settings import (
     AnalysisSettings,
+    ChecksSettings,
     CosmologySettings,
     DeriveSettings,
     EvolutionSettings,
@@ -82,6 +83,10 @@ def analysis_settings(
             dust=None if derive["dust"] is None else dict(derive["dust"]),
         ),
         nuisances=blocks["nuisances"],
+        checks=ChecksSettings(
+            false_alarm=float(blocks["checks"]["false_alarm"]),
+            groups={name: tuple(group) for name, group in blocks["checks"]["groups"].items()},
+        ),
     )
 
 

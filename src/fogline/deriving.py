@@ -1,4 +1,4 @@
-"""Derived tables and predictive check of an analysis from its posterior file."""
+"""Derived tables and exports of an analysis from its posterior file."""
 
 from __future__ import annotations
 
@@ -8,18 +8,16 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from fogline.combining import replicate_rng
 from fogline.datasets import DataSet
 from fogline.derived import Draws, write_derived
 from fogline.exports import write_exports
 from fogline.filters import read_filters
 from fogline.posterior_file import read_draws
-from fogline.predictive import check_predictive, predictive_table
 from fogline.quantities import Setting
 from fogline.response_file import Fit
 from fogline.settings import AnalysisSettings
 from fogline.side_tables import read_side_table
-from fogline.tables import read_table, write_table
+from fogline.tables import read_table
 
 Array = NDArray[np.float64]
 
@@ -90,20 +88,3 @@ def export_results(
     theta = read_draws(posterior, fit.analysis.derive.draws)
     draws = make_draws(theta, fit.setting, fit.analysis)
     write_exports(draws, read_table(parameters), directory, fit.table_meta())
-
-
-def write_predictive(fit: Fit, posterior: str | Path, table: str | Path) -> None:
-    """Write the posterior predictive check.
-
-    Parameters
-    ----------
-    fit : Fit
-    posterior : path-like
-        Posterior file.
-    table : path-like
-        Table to write.
-    """
-    theta = read_draws(posterior, fit.analysis.derive.draws)
-    check = check_predictive(fit.response, theta, replicate_rng(fit))
-    datasets = fit.response.datasets
-    write_table(predictive_table(datasets, check), table, **fit.table_meta(), draws=len(theta))

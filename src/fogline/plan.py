@@ -32,6 +32,15 @@ DERIVED: Final = (
 )
 """Names of the derived tables, in the order of `fogline.derived.DERIVED_TABLES`."""
 
+CHECKS: Final = (
+    "predictive",
+    "discrepancies",
+    "information",
+    "information_by_column",
+    "constraints",
+)
+"""Tables that `fogline.trust.checking` writes for every analysis."""
+
 EXPORTS: Final = (
     "column_distribution_samples.ecsv",
     "column_distribution_samples.fits",
@@ -54,6 +63,8 @@ FIGURES: Final = (
     "ionizing_background",
     "corner",
     "pulls",
+    "misfit",
+    "information",
     "convergence",
     "prior_posterior",
 )

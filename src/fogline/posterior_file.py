@@ -136,6 +136,29 @@ def read_draws(path: str | Path, n_draws: int) -> Array:
     with xarray.open_dataset(path, group="posterior", engine=ENGINE) as posterior:
         others = [name for name in posterior.data_vars if name not in ("log_f", "evolution")]
         arrays = [posterior[name].to_numpy() for name in ("log_f", "evolution", *others)]
+    return _spread(arrays, n_draws)
+
+
+def read_coordinates(path: str | Path, n_draws: int) -> Array:
+    """Read the sampling coordinates of the draws that `read_draws` returns.
+
+    Parameters
+    ----------
+    path : path-like
+    n_draws : int
+        At most this many.
+
+    Returns
+    -------
+    ndarray, shape (n, n_dim)
+        To single precision.
+    """
+    with xarray.open_dataset(path, group="sample_stats", engine=ENGINE) as stats:
+        return _spread([stats["x"].to_numpy().astype(float)], n_draws)
+
+
+def _spread(arrays: list[Array], n_draws: int) -> Array:
+    """Return draws of arrays (n_chains, n_draws, ...) side by side, evenly spread."""
     n_draws_in_all = arrays[0].shape[0] * arrays[0].shape[1]
     flat = np.concatenate([array.reshape(n_draws_in_all, -1) for array in arrays], axis=1)
     return flat[np.linspace(0, len(flat) - 1, min(n_draws, len(flat))).astype(int)]

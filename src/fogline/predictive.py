@@ -9,7 +9,8 @@ For every posterior draw one replicate of every row is drawn from the row's own 
 Data sets: the discrepancy T = Σ pull², each draw compared with its own prediction, and
 p = P(T_rep ≥ T_obs). These p-values use the data twice, once to fit and once to judge, and so lean
 towards 0.5: a small one is serious, an inconspicuous one is weak evidence (Gelman, Meng & Stern
-1996, Statistica Sinica 6, 733).
+1996, Statistica Sinica 6, 733). Rows are therefore flagged by what all *other* rows say of them
+(`fogline.trust.leave_one_out`).
 """
 
 from __future__ import annotations
@@ -26,11 +27,11 @@ from fogline.datasets import DataSet
 from fogline.likelihood import Likelihood
 from fogline.response import Response
 from fogline.tables import bands
+from fogline.trust.discrepancies import row_level
+from fogline.trust.leave_one_out import LeaveOneOut, leave_one_out
+from fogline.trust.weights import GOOD_K
 
 Array = NDArray[np.float64]
-
-ROW_FLAG = 0.0027
-"""Two-sided p-value below which a row is flagged (3σ of a normal)."""
 
 DATASET_FLAG = 0.01
 """p-value below which (or above one minus which) a data set is flagged."""
@@ -49,6 +50,8 @@ class PredictiveCheck:
     pulls, p_values : ndarray, shape (n_rows,)
     dataset_p_values : tuple of float
         One per data set.
+    loo : LeaveOneOut
+        Every row against all the others.
     """
 
     predicted: Array
@@ -56,6 +59,7 @@ class PredictiveCheck:
     pulls: Array
     p_values: Array
     dataset_p_values: tuple[float, ...]
+    loo: LeaveOneOut
 
 
 def check_predictive(response: Response, theta: Array, rng: np.random.Generator) -> PredictiveCheck:
@@ -84,6 +88,7 @@ def check_predictive(response: Response, theta: Array, rng: np.random.Generator)
             _discrepancy_p_value(squares[0][:, rows].sum(axis=1), squares[1][:, rows].sum(axis=1))
             for rows in response.slices  # rows of a process that are not shown have no pulls
         ),
+        loo=leave_one_out(response, theta, rng),
     )
 
 
@@ -108,21 +113,42 @@ def _row_p_values(likelihood: Likelihood, drawn: Array) -> Array:
     return np.where(likelihood.limit == 0, two_sided, one_sided)
 
 
-def predictive_table(datasets: tuple[DataSet, ...], check: PredictiveCheck) -> Table:
-    """Return one line a row: identity, observed value, replicate bands, pull, p-value, flag."""
+def predictive_table(
+    datasets: tuple[DataSet, ...], check: PredictiveCheck, false_alarm: float = 0.05
+) -> Table:
+    """Return one line a row: identity, observed value, replicate bands, pull, p-values, flag.
+
+    Parameters
+    ----------
+    datasets : tuple of DataSet
+    check : PredictiveCheck
+    false_alarm : float
+        Of all flags of rows and of `fogline.trust.discrepancies` together.
+    """
+    visible = visible_rows(datasets)
+    level = row_level(int(visible.sum()), false_alarm)
     table = row_table(datasets)
     for name, values in bands(check.replicates).items():
         table[name] = values
     table["pull"] = check.pulls
     table["p_value"] = check.p_values
-    table["flag"] = ["outside" if p < ROW_FLAG else "" for p in check.p_values]
+    table["loo_pit"] = check.loo.pit
+    table["loo_p_value"] = check.loo.p_value
+    # Equal weights have no tail at all.
+    table["pareto_k"] = np.maximum(check.loo.pareto_k, -1.0)
+    table["flag"] = ["outside" if p < level else "" for p in check.loo.p_value]
     table.meta["definition"] = (
         "Bands: replicates drawn from each row's likelihood over the posterior, in the unit and "
         "convention of the row's file. pull: (observed - median prediction) / sigma. p_value: two-"
-        f"sided for measurements and counts, one-sided for limits; flagged below {ROW_FLAG}."
+        "sided for measurements and counts, one-sided for limits, from the fit that has seen the "
+        "row. loo_pit: chance, predicted by all other rows, of a value below that observed; "
+        f"loo_p_value: the same as a p-value, flagged below {level:.2g}, so that consistent data "
+        f"raise a flag here or among the discrepancies with a chance of {false_alarm:g}. pareto_k:"
+        f" of the weights that leave the row out; from {GOOD_K} on loo numbers can't be trusted."
     )
+    table.meta["row_level"] = level
     table.meta["datasets"] = dataset_summary(datasets, check)
-    return table[visible_rows(datasets)]
+    return table[visible]
 
 
 def dataset_summary(

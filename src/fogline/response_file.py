@@ -175,7 +175,9 @@ def load_fit(path: str | Path, analysis: AnalysisSettings | None = None) -> Fit:
         datasets = tuple(_read_dataset(group) for group in groups)
         blocks = tuple(_read_block(group) for group in groups)
     if analysis is not None:
-        stored = replace(stored, sampler=analysis.sampler, derive=analysis.derive)
+        stored = replace(
+            stored, sampler=analysis.sampler, derive=analysis.derive, checks=analysis.checks
+        )
     setting = setting_of(stored)
     response = Response(setting.distribution, datasets, blocks, setting.doppler_grid)
     return Fit(stored, response, provenance)

@@ -128,6 +128,15 @@ class DeriveSettings:
 
 
 @dataclass(frozen=True)
+class ChecksSettings:
+    """How a fit is questioned."""
+
+    false_alarm: float = 0.05  # chance that consistent data raise any flag
+    # Data sets that are left out together, by the name of their group.
+    groups: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
+
+
+@dataclass(frozen=True)
 class AnalysisSettings:
     """One named fit: data sets, model, sampler, derived quantities."""
 
@@ -139,6 +148,7 @@ class AnalysisSettings:
     derive: DeriveSettings
     # By data set: scale, scatter, student_dof, as the file's meta may state them too.
     nuisances: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
+    checks: ChecksSettings = field(default_factory=ChecksSettings)
 
 
 @dataclass(frozen=True)
@@ -171,7 +181,13 @@ def analysis_from_plain(plain: Mapping[str, Any]) -> AnalysisSettings:
         sampler=SamplerSettings(**{k: _tupled(v) for k, v in plain["sampler"].items()}),
         derive=DeriveSettings(**{k: _tupled(v) for k, v in plain["derive"].items()}),
         nuisances=plain.get("nuisances", {}),
+        checks=_checks(plain.get("checks", {})),
     )
+
+
+def _checks(plain: Mapping[str, Any]) -> ChecksSettings:
+    groups = {name: tuple(members) for name, members in plain.get("groups", {}).items()}
+    return ChecksSettings(**{**plain, "groups": groups})
 
 
 def _tupled(value: Any) -> Any:

@@ -10,7 +10,6 @@ from scipy import stats
 from fogline.datasets import hypothetical
 from fogline.likelihood import Likelihood
 from fogline.predictive import (
-    ROW_FLAG,
     check_predictive,
     dataset_summary,
     predictive_table,
@@ -80,7 +79,7 @@ def test_an_outlier_is_flagged_and_its_pull_has_its_sign():
     assert table["flag"].tolist() == ["", "outside", "outside", "", ""]
     # Two-sided: 1σ is 32%, within 4 standard errors of 4000 draws.
     assert_allclose(found.p_values[3:], 2.0 * stats.norm.sf(1.0), atol=0.06)
-    assert np.all(found.p_values[1:3] < ROW_FLAG)
+    assert np.all(found.p_values[1:3] < 0.0027)
     assert found.p_values[0] > 0.9
 
 
@@ -119,7 +118,7 @@ def test_counts_far_from_their_mean_are_flagged():
     observed = np.round(predicted)
     observed[1] += np.ceil(5.0 * np.sqrt(predicted[1]))
     found = check([dataclasses.replace(bins, observed=observed)])
-    assert (found.p_values < ROW_FLAG).tolist() == [False, True, False, False]
+    assert (found.p_values < 0.0027).tolist() == [False, True, False, False]
     assert found.pulls[1] == pytest.approx(
         (observed[1] - predicted[1]) / np.sqrt(predicted[1]), rel=1e-12
     )
@@ -142,7 +141,7 @@ def test_limits_are_judged_on_one_side(sign):
     kept, broken = check([limits]).p_values
     # 5σ within the limit, and 5σ beyond it.
     assert kept > 0.99
-    assert broken < ROW_FLAG
+    assert broken < 0.0027
 
 
 def test_the_seed_decides():
@@ -167,6 +166,9 @@ def test_table_has_one_line_a_row():
         "hi95",
         "pull",
         "p_value",
+        "loo_pit",
+        "loo_p_value",
+        "pareto_k",
         "flag",
     ]
     assert Likelihood.from_datasets([data]).observed.shape == (3,)

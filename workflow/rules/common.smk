@@ -3,7 +3,7 @@
 import os
 import sys
 
-from fogline.plan import DERIVED, EXPORTS, FIGURES, closing_words, read_study
+from fogline.plan import CHECKS, DERIVED, EXPORTS, FIGURES, closing_words, read_study
 from fogline.faults import InputError
 from fogline.linked_files import linked_files
 from fogline.provenance import code_hash, settings_hash
@@ -19,7 +19,7 @@ except InputError as error:
     sys.exit(2)
 
 ANALYSES = list(STUDY.analyses)
-TABLES = ["parameters", *DERIVED, "predictive"]
+TABLES = ["parameters", *DERIVED, *CHECKS]
 COMPARISON = ["results/comparison/figures/shifts.pdf"] if len(ANALYSES) > 1 else []
 
 

@@ -17,22 +17,24 @@ rule derive_tables:
         "../scripts/derive_tables.py"
 
 
-rule check_predictive:
+rule check_fit:
     input:
         response="results/{analysis}/response.h5",
         posterior="results/{analysis}/posterior.nc",
+        sides=lambda wildcards: analysis_of(wildcards).derive.side_files,
     output:
-        table="results/{analysis}/tables/predictive.ecsv",
+        expand("results/{{analysis}}/tables/{table}.ecsv", table=CHECKS),
     log:
-        "logs/check_predictive/{analysis}.log",
+        "logs/check_fit/{analysis}.log",
     resources:
-        mem_mb=1000,
+        mem_mb=1500,
         runtime=10,
     params:
-        draws=lambda wildcards: analysis_of(wildcards).derive.draws,
-        code=code_hash("fogline.deriving"),
+        derive=lambda wildcards: settings_hash(analysis_of(wildcards).derive),
+        false_alarm=lambda wildcards: analysis_of(wildcards).checks.false_alarm,
+        code=code_hash("fogline.trust.checking"),
     script:
-        "../scripts/check_predictive.py"
+        "../scripts/check_fit.py"
 
 
 rule export_results:

@@ -25,6 +25,7 @@ rule draw_figures:
     params:
         derive=lambda wildcards: settings_hash(analysis_of(wildcards).derive),
         draws=lambda wildcards: analysis_of(wildcards).derive.draws,
+        false_alarm=lambda wildcards: analysis_of(wildcards).checks.false_alarm,
         reference_redshift=lambda wildcards: analysis_of(
             wildcards
         ).model.reference_redshift,

@@ -124,5 +124,6 @@ def _notes(table: Table, datasets: tuple[DataSet, ...]) -> list[str]:
     if any((data.limit[data.visible] != 0).any() for data in datasets):
         notes.append("Open: limits, against the measurement behind them.")
     if _outside(table).any():
-        notes.append("Red rings: outside the replicates (two-sided $p < 0.0027$).")
+        level = float(table.meta["row_level"])
+        notes.append(f"Red rings: at odds with all other rows (leave-one-out $p < {level:.1g}$).")
     return notes

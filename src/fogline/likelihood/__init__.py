@@ -151,6 +151,36 @@ class Likelihood:
             out[:, part.rows] = part.replicate(model, scatter, rng)
         return out
 
+    def ln_conditional(self, predicted: Array, nuisances: Array | None = None) -> Array:
+        """Return ln p of every row given the others of its data set, shape (n, n_rows).
+
+        Other than in `ln_rows` only where a data set has a covariance; arguments as there.
+        """
+        out = np.empty_like(predicted)
+        model, scatter = self._at(predicted, nuisances)
+        for part in self.parts:
+            out[:, part.rows] = part.ln_conditional(model, scatter)
+        return out
+
+    def tails(self, predicted: Array, nuisances: Array | None = None) -> tuple[Array, Array]:
+        """Return the chances that a row, given the others, falls below its datum, and on it.
+
+        Parameters
+        ----------
+        predicted : ndarray, shape (n, n_rows)
+        nuisances : ndarray, shape (n, n_nuisances), optional
+
+        Returns
+        -------
+        below, at : ndarray, shape (n, n_rows)
+            `at` is zero but for counts.
+        """
+        below, at = np.empty_like(predicted), np.empty_like(predicted)
+        model, scatter = self._at(predicted, nuisances)
+        for part in self.parts:
+            below[:, part.rows], at[:, part.rows] = part.tails(model, scatter)
+        return below, at
+
     def scaled(self, predicted: Array, nuisances: Array | None = None) -> Array:
         """Return predictions with the nuisance scales applied, in each file's convention."""
         return self.nuisances.scaled(predicted, nuisances)

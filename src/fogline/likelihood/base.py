@@ -95,6 +95,14 @@ class Part(Protocol):
         """Return (data − model) / σ of its rows, shape (..., k)."""
         ...
 
+    def ln_conditional(self, model: Array, scatter: Array | None) -> Array:
+        """Return ln p of each row given the others of its data set, shape (n, k)."""
+        ...
+
+    def tails(self, model: Array, scatter: Array | None) -> tuple[Array, Array]:
+        """Return the chances that a row, given the others, falls below its datum, and on it."""
+        ...
+
 
 def _rows(data: DataSet) -> RowData:
     """Return the rows of one data set."""

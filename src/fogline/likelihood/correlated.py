@@ -16,10 +16,10 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
-from scipy.special import gammaln
+from scipy.special import gammaln, ndtr, stdtr
 
 from fogline.likelihood.base import Array, Indices, RowData
-from fogline.likelihood.rows import LN_ROOT_2PI
+from fogline.likelihood.rows import LN_ROOT_2PI, ln_student
 
 
 @dataclass(frozen=True)
@@ -90,3 +90,36 @@ class CorrelatedRows:
         residual = (data[..., self.rows] - model[..., self.rows]) @ vectors
         # The symmetric root keeps every pull with its row as nearly as whitening can.
         return np.asarray(residual / np.sqrt(self._variances(scatter)) @ vectors.T)
+
+    def ln_conditional(self, model: Array, scatter: Array | None) -> Array:
+        """Return ln p of each row given the others of the data set, shape (n, k)."""
+        pull, precision, dof = self._given_others(model, scatter)
+        jacobian = self._jacobian - 0.5 * np.log(precision)
+        if np.isfinite(dof):
+            return np.asarray(ln_student(pull, np.asarray(dof)) - jacobian)
+        return np.asarray(-0.5 * pull**2 - LN_ROOT_2PI - jacobian)
+
+    def tails(self, model: Array, scatter: Array | None) -> tuple[Array, Array]:
+        """Return P(y < datum), given the other rows, and zeros, each (n, k)."""
+        pull, _, dof = self._given_others(model, scatter)
+        below = stdtr(dof, pull) if np.isfinite(dof) else ndtr(pull)
+        return np.asarray(below), np.zeros_like(pull)
+
+    def _given_others(self, model: Array, scatter: Array | None) -> tuple[Array, Array, float]:
+        """Return pulls and precisions of the rows given the others, and degrees of freedom.
+
+        With Q the inverse covariance, (Q r)_i / √Q_ii is the pull of row i given the others
+        (Bürkner, Gabry & Vehtari 2021, Computational Statistics 36, 1243); a Student-t of ν
+        degrees keeps ν + k - 1 of them and takes a scale from how far out the others are.
+        """
+        vectors = self._eigen[1]
+        weight = np.broadcast_to(1.0 / self._variances(scatter), (len(model), len(self.rows)))
+        along = (self.data.observed[self.rows] - model[:, self.rows]) @ vectors
+        precision = weight @ (vectors**2).T
+        pull = (along * weight) @ vectors.T / np.sqrt(precision)
+        dof, k = float(self.data.student_dof[self.rows[0]]), len(self.rows)
+        if not np.isfinite(dof):
+            return pull, precision, dof
+        others = (along**2 * weight).sum(axis=1, keepdims=True) - pull**2
+        scale = (dof + others) / (dof + k - 1.0)
+        return pull / np.sqrt(scale), precision / scale, dof + k - 1.0

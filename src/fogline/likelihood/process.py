@@ -50,6 +50,15 @@ class ProcessRows:
         """Return zeros: these rows have no pulls of their own."""
         return np.zeros((*model.shape[:-1], len(self.rows)))
 
+    def ln_conditional(self, model: Array, scatter: Array | None) -> Array:
+        """Return what `ln_rows` does: only the sum over the list leaves anything out."""
+        return self.ln_rows(model, scatter)
+
+    def tails(self, model: Array, scatter: Array | None) -> tuple[Array, Array]:
+        """Return halves and zeros: these rows are no data of their own."""
+        shape = (len(model), len(self.rows))
+        return np.full(shape, 0.5), np.zeros(shape)
+
 
 @dataclass(frozen=True)
 class ShownRows(CountRows):

@@ -8,7 +8,7 @@ from functools import cached_property
 
 import numpy as np
 from scipy import stats
-from scipy.special import gammaln, log_ndtr, xlogy
+from scipy.special import gammaln, log_ndtr, ndtr, pdtr, stdtr, xlogy
 
 from fogline.likelihood.base import Array, Indices, RowData
 
@@ -64,6 +64,22 @@ class NormalRows:
         lo, hi = self.data.sigmas(self.rows, scatter)
         return np.asarray(residual / np.where(residual < 0.0, hi, lo))
 
+    def ln_conditional(self, model: Array, scatter: Array | None) -> Array:
+        """Return ln p, shape (n, k): rows are independent."""
+        return self.ln_rows(model, scatter)
+
+    def tails(self, model: Array, scatter: Array | None) -> tuple[Array, Array]:
+        """Return P(y < datum) and zeros, each (n, k)."""
+        pull = self.standardize(self.data.observed, model, scatter)
+        lo, hi = self.data.sigmas(self.rows, scatter)
+        # Each half of the density holds the share of its own error.
+        share = np.where(pull < 0.0, hi, lo) * 2.0 / (lo + hi)
+        half = share * self._cdf(-np.abs(pull))
+        return np.where(pull < 0.0, half, 1.0 - half), np.zeros_like(half)
+
+    def _cdf(self, pull: Array) -> Array:
+        return np.asarray(ndtr(pull))
+
 
 @dataclass(frozen=True)
 class StudentRows(NormalRows):
@@ -87,6 +103,9 @@ class StudentRows(NormalRows):
             return rng.standard_t(self._dof, shape)
 
         return _stepped(model[:, self.rows], self.data.sigmas(self.rows, scatter), rng, draw)
+
+    def _cdf(self, pull: Array) -> Array:
+        return np.asarray(stdtr(self._dof, pull))
 
 
 @dataclass(frozen=True)
@@ -123,6 +142,16 @@ class LimitRows:
         """Return pulls of the measurements behind limits."""
         return self._gap(data, model, scatter)
 
+    def ln_conditional(self, model: Array, scatter: Array | None) -> Array:
+        """Return ln P, shape (n, k): rows are independent."""
+        return self.ln_rows(model, scatter)
+
+    def tails(self, model: Array, scatter: Array | None) -> tuple[Array, Array]:
+        """Return P(y < measurement behind the limit) and zeros, each (n, k)."""
+        ln_p = self.ln_rows(model, scatter)
+        p = np.exp(ln_p)
+        return np.where(self.data.limit[self.rows] > 0, p, 1.0 - p), np.zeros_like(p)
+
     def _gap(self, data: Array, model: Array, scatter: Array | None) -> Array:
         sigma = self.data.sigmas(self.rows, scatter)[1]
         return np.asarray((data[..., self.rows] - model[..., self.rows]) / sigma)
@@ -152,6 +181,17 @@ class CountRows:
         """Return (n − μ) / √μ."""
         mean = model[..., self.rows]
         return np.asarray((data[..., self.rows] - mean) / np.sqrt(mean))
+
+    def ln_conditional(self, model: Array, scatter: Array | None) -> Array:
+        """Return ln p, shape (n, k): rows are independent."""
+        return self.ln_rows(model, scatter)
+
+    def tails(self, model: Array, scatter: Array | None) -> tuple[Array, Array]:
+        """Return P(n < count) and P(n = count), each (n, k)."""
+        count, mean = self.data.observed[self.rows], model[:, self.rows]
+        at_most = pdtr(count, mean)
+        below = np.where(count > 0.0, pdtr(np.maximum(count - 1.0, 0.0), mean), 0.0)
+        return below, at_most - below
 
 
 def ln_student(x: Array, dof: Array) -> Array:
