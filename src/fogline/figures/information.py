@@ -7,7 +7,7 @@ from typing import Final
 import numpy as np
 from matplotlib.figure import Figure
 
-from fogline.figures.axis import column_axis, mark_classes
+from fogline.figures.axis import column_axis, mark_classes, plain_log_ticks
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.style import (
     MODEL,
@@ -73,6 +73,7 @@ def draw(inputs: FigureInputs) -> Figure:
     for name, line, label in (("sigma", "-", "draws"), ("sigma_linear", ":", "linear")):
         lower.plot(log_nhi, table[name], line, color=MODEL, linewidth=1.0, label=label)
     lower.set_yscale("log")
+    plain_log_ticks(lower.yaxis)
     lower.set_ylabel("error [dex]")
     lower.legend(loc="upper left")
     column_axis(lower, inputs)

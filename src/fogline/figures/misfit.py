@@ -67,7 +67,7 @@ def _draw_scores(axes: Axes, inputs: FigureInputs) -> None:
     for sign in (-1.0, 1.0):
         axes.axhline(sign * ndtri(0.5 * level), color=WARNING, linewidth=0.7, linestyle="--")
     pit = np.clip(np.asarray(table["loo_pit"], float), FARTHEST, 1.0 - FARTHEST)
-    reach = 3.5
+    reach = max(3.5, -1.15 * float(ndtri(0.5 * level)))
     for data in inputs.fit.response.datasets:
         rows = np.flatnonzero(np.asarray(table["dataset"]) == data.name)
         rows = rows[data.limit[data.visible] == 0]
