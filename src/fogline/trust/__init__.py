@@ -1,0 +1,1 @@
+"""Whether results can be trusted: calibration by simulated data."""
