@@ -63,27 +63,24 @@ def draw_calibration(
     ranks = checked(ranks, n_draws, names)
     band = uniform_band(len(ranks), n_draws, alpha, len(names))
     curves = counts_below(ranks, n_draws) / len(ranks)
-    depth = _depth(curves, band)
-    worst = np.argsort(-depth, kind="stable")[:MOST_PANELS]
+    # Many p-values are the smallest that there is: among those the largest excess is the worst.
+    excess = np.abs(curves - band.at).max(axis=1)
+    worst = np.lexsort((-excess, np.asarray(table["p_uniform"])))[:MOST_PANELS]
     n_columns = min(COLUMNS, len(worst))
     n_rows = -(-len(worst) // n_columns)
-    figure = Figure(figsize=(TWO_COLUMNS, 0.55 + PANEL_HEIGHT * n_rows), layout="constrained")
+    width = TWO_COLUMNS * max(2, n_columns) / COLUMNS
+    figure = Figure(figsize=(width, 0.5 + PANEL_HEIGHT * n_rows), layout="constrained")
     grid = figure.subplots(n_rows, n_columns, sharex=True, sharey=True, squeeze=False)
     panels = list(grid.ravel())
     for axes, index in zip(panels, worst, strict=False):
         _draw_panel(axes, curves[index], band)
         _name(axes, names[index], str(table["flag"][index]))
-    _dress(panels, len(worst), n_columns, _reach(curves[worst], band))
-    figure.supylabel("share of ranks minus uniform", fontsize=9.0)
+    reach = _reach(curves[worst], band)
+    # The words of a flag stand below the curves.
+    panels[0].set_ylim(-1.45 * reach if any(table["flag"][worst]) else -reach, reach)
+    _dress(panels, len(worst), n_columns)
     add_note(figure, _notes(table.meta, len(worst), len(names)))
     return figure
-
-
-def _depth(curves: Array, band: UniformBand) -> Array:
-    """Return the largest distance from uniform in units of the band, shape (n_curves,)."""
-    above = (curves - band.at) / np.maximum(band.hi - band.at, 1e-12)
-    below = (band.at - curves) / np.maximum(band.at - band.lo, 1e-12)
-    return np.asarray(np.maximum(above, below).max(axis=1))
 
 
 def _closed(values: Array, start: float, end: float) -> Array:
@@ -126,25 +123,28 @@ def _reach(curves: Array, band: UniformBand) -> float:
     return 1.12 * max(float(np.abs(end).max()) for end in ends)
 
 
-def _dress(panels: list[Axes], n_drawn: int, n_columns: int, reach: float) -> None:
+def _dress(panels: list[Axes], n_drawn: int, n_columns: int) -> None:
     panels[0].set_xlim(0.0, 1.0)
-    panels[0].set_xticks([0.0, 0.5, 1.0], ["0", "0.5", "1"])
-    # The words of a flag stand below the curves.
-    panels[0].set_ylim(-1.45 * reach, reach)
+    panels[0].set_xticks([0.25, 0.5, 0.75], ["0.25", "0.5", "0.75"])
     for index, axes in enumerate(panels):
         if index >= n_drawn:
             axes.remove()
-        elif index + n_columns >= n_drawn:
+            continue
+        if index + n_columns >= n_drawn:  # the lowest of its column
             axes.tick_params(axis="x", labelbottom=True)
-            axes.set_xlabel("rank of the truth / draws")
+        if index + n_columns >= len(panels):
+            axes.set_xlabel("rank / draws")
+        if index % n_columns == 0:
+            axes.set_ylabel(r"$\Delta$ share")
 
 
 def _notes(meta: dict[str, Any], n_drawn: int, n_quantities: int) -> list[str]:
     share = 1.0 - float(meta["alpha"])
     first = (
-        f"{meta['n_replicates']} replicates, {meta['n_draws']} draws each. Shaded: where all curves"
-        f" of all {n_quantities} quantities stay together with probability {share:g} if posteriors"
-        " are calibrated. Red: outside."
+        "Share of ranks of the truth up to each rank, minus that of uniform ranks; "
+        f"{meta['n_replicates']} replicates, {meta['n_draws']} draws each. Shaded: where the curves"
+        f" of all {n_quantities} quantities stay with probability {share:g} if posteriors are"
+        " calibrated. Red: outside."
     )
     if n_drawn == n_quantities:
         return [first]

@@ -102,9 +102,7 @@ class UniformBand:
     gamma: float
 
 
-def rank_table(
-    ranks: ArrayLike, n_draws: int, names: Sequence[str], alpha: float = ALPHA
-) -> Table:
+def rank_table(ranks: ArrayLike, n_draws: int, names: Sequence[str], alpha: float = ALPHA) -> Table:
     """Return one line a quantity: uniformity, coverage, and the kind of failure in words.
 
     Parameters
