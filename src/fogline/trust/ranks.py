@@ -207,7 +207,7 @@ def uniformity(ranks: Ranks, n_draws: int, alpha: float) -> tuple[Array, NDArray
     null = _simulated(n, n_draws, _n_simulated(share))
     least = _least_tail(counts_below(ranks, n_draws), _tails(n, n_draws))
     p_values = (1.0 + np.searchsorted(null, least, side="right")) / (1.0 + len(null))
-    return p_values, least < _gamma(null, share)
+    return np.asarray(p_values), least < _gamma(null, share)
 
 
 def uniform_band(
@@ -245,7 +245,7 @@ def _points(n_draws: int) -> Ranks:
 
 
 def _shares(n_draws: int) -> Array:
-    return (_points(n_draws) + 1.0) / (n_draws + 1.0)
+    return np.asarray((_points(n_draws) + 1.0) / (n_draws + 1.0), dtype=float)
 
 
 @lru_cache(maxsize=8)
@@ -276,7 +276,7 @@ def _simulated(n_replicates: int, n_draws: int, n_simulated: int) -> Array:
     for _ in range(n_simulated // CHUNK):
         counts = rng.multinomial(n_replicates, steps, CHUNK)[:, :-1].cumsum(axis=1)
         parts.append(_least_tail(counts, tails))
-    return np.sort(np.concatenate(parts))
+    return np.asarray(np.sort(np.concatenate(parts)))
 
 
 def _gamma(null: Array, alpha: float) -> float:
@@ -304,7 +304,8 @@ def chi_square(ranks: Ranks, n_draws: int) -> float:
 def _bins(n_replicates: int, n_draws: int) -> Ranks:
     """Return how many possible ranks each bin holds."""
     n_bins = max(1, min(MOST_BINS, n_replicates // LEAST_IN_BIN, n_draws + 1))
-    return np.diff(np.linspace(0, n_draws + 1, n_bins + 1).round().astype(np.int64))
+    edges = np.linspace(0, n_draws + 1, n_bins + 1).round()
+    return np.asarray(np.diff(edges), dtype=np.int64)
 
 
 # Coverage
