@@ -152,12 +152,12 @@ class _Drawn:
     ) -> _Drawn:
         with np.errstate(divide="ignore"):  # ln 0 is far from any datum
             drawn = likelihood.replicate(predicted, rng, nuisances)[0]
-        stays = likelihood.limit * (drawn - likelihood.observed) <= 0.0
-        rows = likelihood.rows
+        rows, made = likelihood.rows, likelihood.observed
+        upper, lower = rows.limit > 0, rows.limit < 0
         return cls(
             likelihood.in_file_space(drawn),
             rows.sigma_hi,
-            stays & (likelihood.limit != 0),
+            (upper & (drawn <= made)) | (lower & (drawn >= made)),
             rows.log_normal,
         )
 
