@@ -142,7 +142,7 @@ def test_limits_stay_where_the_likelihood_says_so(sign, kind):
         assert_allclose(after.sigma_lo, rows.sigma_hi)
 
 
-def mean_ratio(datasets, other, n, seed=3, rebuilt=False):
+def mean_ratio(datasets, other, n, *, seed=3, rebuilt=False, extras=None):
     """Return the mean of p(replicate | other) / p(replicate | θ), and its standard error.
 
     It is 1 if and only if replicates are drawn from what the likelihood is the density of.
@@ -151,6 +151,8 @@ def mean_ratio(datasets, other, n, seed=3, rebuilt=False):
     pair = np.stack([THETA, other])
     ratios = []
     for drawn in replicates(datasets, n, seed):
+        if extras is not None:  # a model that is not the one that was drawn from
+            drawn = [dataclasses.replace(d, extras={**d.extras, **extras}) for d in drawn]
         own = build_response(drawn, SETTING) if rebuilt else response
         ln_p = Likelihood.from_datasets(drawn).ln_total(own.predict(pair))
         ratios.append(np.exp(ln_p[1] - ln_p[0]))
@@ -263,18 +265,21 @@ def test_simulated_lists_have_cells_that_hold_their_absorbers():
     assert np.isfinite(Likelihood.from_datasets([data]).ln_total(predicted[None]))[0]
 
 
-@pytest.mark.parametrize("kind", ["measured", "bounds"])
+@pytest.mark.parametrize("kind", ["measured", "bounds", "wrong"])
 def test_simulated_lists_have_the_density_of_the_likelihood(kind):
     changes = {"n_sightlines": 150, "errors": (0.1, 0.1001)}
+    wide = {"errors_lo": np.full(4, 0.35), "errors_hi": np.full(4, 0.35)}
+    wrong = kind == "wrong"  # the control: selection by errors that the list does not have
     # Bounds that no upper end of the list cuts off.
     more = {"bound": 20, "log_nhi_max": None} if kind == "bounds" else {}
     data = a_list(**changes, **more)
     theta = THETA.copy()
     theta[7:] -= 0.06  # steeper above the list's lower end, and with other evolution
     theta[12] += 0.3
-    mean, error = mean_ratio([data], theta, 250, rebuilt=True)
-    assert error < 0.1
-    assert abs(mean - 1.0) < 4.0 * error
+    extras = wide if wrong else None
+    mean, error = mean_ratio([data], theta, 200, rebuilt=True, extras=extras)
+    assert error < 0.06
+    assert bool(abs(mean - 1.0) > 4.0 * error) is wrong
 
 
 def test_lower_bounds_keep_their_share_above_their_mean():
