@@ -183,15 +183,38 @@ def _errors_of(listed: Listed) -> tuple[Array, Array]:
 
 
 def _rows_of(listed: Listed, meta: dict[str, Any], span: tuple[float, float]) -> dict[str, Any]:
-    """Return the rows of the data set: cells, expected number, bins that are shown."""
+    edges = _bin_edges(listed, meta)
+    counts = np.histogram(np.clip(listed.log_nhi, edges[0], edges[-1]), edges)[0]
+    return list_rows(listed, edges, counts, span)
+
+
+def list_rows(
+    listed: Listed, edges: Array, counts: NDArray[np.int64], span: tuple[float, float]
+) -> dict[str, Any]:
+    """Return the rows of a data set: cells, expected number, bins that are shown.
+
+    Parameters
+    ----------
+    listed : Listed
+        Any number of absorbers, none included.
+    edges : ndarray, shape (n_bins + 1,) [dex of cm^-2]
+        Of the bins that are shown.
+    counts : ndarray of int, shape (n_bins,)
+        Absorbers in them.
+    span : (float, float)
+        Ends of the path.
+
+    Returns
+    -------
+    dict
+        Keyword arguments of `fogline.datasets.DataSet` that hold one entry a row.
+    """
     parts = [(0, listed.where(~listed.bound)), (-1, listed.where(listed.bound))]
     cells = [
         (sign, reduce_list(part.log_nhi, part.z, part.lo, part.hi))
         for sign, part in parts
         if len(part.z)
     ]
-    edges = _bin_edges(listed, meta)
-    counts = np.histogram(np.clip(listed.log_nhi, edges[0], edges[-1]), edges)[0].astype(float)
     n_cells = sum(len(cell.z) for _, cell in cells)
     nan = np.full(n_cells, np.nan)
 
@@ -206,7 +229,7 @@ def _rows_of(listed: Listed, meta: dict[str, Any], span: tuple[float, float]) ->
     return {
         "z_lo": column("z", span[0], np.full(n_bins, span[0])),
         "z_hi": column("z", span[1], np.full(n_bins, span[1])),
-        "observed": column("number", 0.0, counts),
+        "observed": column("number", 0.0, counts.astype(float)),
         "err_lo": column("lo", np.nan, none),
         "err_hi": column("hi", np.nan, none),
         "limit": np.concatenate([*limit, np.zeros(1 + n_bins, dtype=np.int64)]),
