@@ -7,6 +7,7 @@ from typing import Any, Final
 
 from fogline.settings import (
     AnalysisSettings,
+    CandidateSettings,
     CosmologySettings,
     DeriveSettings,
     EvolutionSettings,
@@ -82,6 +83,21 @@ def analysis_settings(
             dust=None if derive["dust"] is None else dict(derive["dust"]),
         ),
         nuisances=blocks["nuisances"],
+        forecasts=tuple(
+            _candidate(key, candidate)
+            for key, candidate in blocks["forecasts"].items()
+            if candidate is not None
+        ),
+    )
+
+
+def _candidate(name: str, block: Mapping[str, Any]) -> CandidateSettings:
+    return CandidateSettings(
+        name=name,
+        quantity=block["quantity"],
+        meta=dict(block.get("meta") or {}),
+        unit=block.get("unit") or "",
+        rows=tuple(dict(row) for row in block["rows"]),
     )
 
 

@@ -128,6 +128,18 @@ class DeriveSettings:
 
 
 @dataclass(frozen=True)
+class CandidateSettings:
+    """Rows that somebody might measure, to be forecast; `fogline.trust.candidates` reads them."""
+
+    name: str
+    quantity: str
+    meta: Mapping[str, Any]  # as a constraint file of the quantity has it
+    unit: str  # of value and errors; empty where dimensionless
+    # Each with z or z_lo, z_hi, columns or wavelengths, and error, relative_error or path.
+    rows: tuple[Mapping[str, Any], ...]
+
+
+@dataclass(frozen=True)
 class AnalysisSettings:
     """One named fit: data sets, model, sampler, derived quantities."""
 
@@ -139,6 +151,7 @@ class AnalysisSettings:
     derive: DeriveSettings
     # By data set: scale, scatter, student_dof, as the file's meta may state them too.
     nuisances: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
+    forecasts: tuple[CandidateSettings, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -171,6 +184,10 @@ def analysis_from_plain(plain: Mapping[str, Any]) -> AnalysisSettings:
         sampler=SamplerSettings(**{k: _tupled(v) for k, v in plain["sampler"].items()}),
         derive=DeriveSettings(**{k: _tupled(v) for k, v in plain["derive"].items()}),
         nuisances=plain.get("nuisances", {}),
+        forecasts=tuple(
+            CandidateSettings(**{k: _tupled(v) for k, v in candidate.items()})
+            for candidate in plain.get("forecasts", ())
+        ),
     )
 
 

@@ -1,0 +1,1 @@
+"""What may be trusted of a fit, and what more data would bring."""
