@@ -5,13 +5,17 @@ Common practice: nothing here comes from a publication.
 
 from __future__ import annotations
 
+import argparse
 import dataclasses
 import json
 
 import numpy as np
 import pytest
+from hypothesis import HealthCheck, given, settings
+from hypothesis import strategies as st
 from numpy.testing import assert_allclose, assert_array_equal
 
+from fogline.commands.check import run
 from fogline.config import check_forecasts, load_config
 from fogline.faults import InputError
 from fogline.response import build_response
@@ -271,4 +275,33 @@ def test_fault_of_an_override_stands_where_it_is(folder):
 def test_reading_raises_with_every_fault(folder):
     text = CONFIG.replace("form: tau", "form: tao").replace("unit: Mpc", "unit: kg")
     with pytest.raises(InputError, match=r"(?s)config:1: .*kg.*config:1: .*tao"):
+        candidates(folder, text)
+
+
+def test_check_command_tells_them(folder):
+    (folder / "config.yaml").write_text(CONFIG.replace("form: tau", "form: tao"), encoding="utf-8")
+    with pytest.raises(
+        InputError, match=r"config\.yaml:9: forecasts\.opacity\.meta\.form: form is"
+    ):
+        run(argparse.Namespace(config="config.yaml", files=[]))
+
+
+PIECES = ("null", "[1]", "{a: 1}", "-1", "0", ".inf", "9" * 25, "yes", "''", "2026-01-01", "text")
+
+
+@settings(max_examples=100, deadline=None, suppress_health_check=list(HealthCheck))
+@given(data=st.data())
+def test_whatever_stands_there_the_answer_is_candidates_or_faults(folder, data):
+    start = CONFIG.index("forecasts:")
+    values = [i for i in range(start, len(CONFIG)) if CONFIG[i - 2 : i] == ": "]
+    text = CONFIG
+    for at in sorted(data.draw(st.sets(st.sampled_from(values), max_size=2)), reverse=True):
+        ends = [i for i in range(at + 1, len(text)) if text[i] in ",}\n"]
+        text = text[:at] + data.draw(st.sampled_from(PIECES)) + text[ends[0] :]
+    try:
+        found = faults_of(folder, text)
+    except InputError:  # no longer YAML
+        return
+    assert all(1 <= line <= text.count("\n") + 1 for line, _ in found)
+    if not found:
         candidates(folder, text)

@@ -23,10 +23,13 @@ from fogline.figures.style import (
 FAMILY_LABELS: Final = {**LABELS, "log_f": r"$\log f(N)$"}
 """Labels of families of quantities."""
 
-ROW: Final = 0.34
-"""Height of a candidate [in]."""
+LEAST_ROW: Final = 0.3
+"""Least height of a candidate [in]."""
 
-SPREAD: Final = 0.66
+MARK: Final = 0.06
+"""Distance of neighbouring marks of a candidate [in]: they stay apart where ratios are equal."""
+
+SPREAD: Final = 0.8
 """Share of a candidate's height that its marks take."""
 
 CAPTION: Final = (
@@ -34,7 +37,7 @@ CAPTION: Final = (
     "Assumes the fitted model and the stated errors."
 )
 FAILED: Final = "Open marks: importance weights fail; upper bounds from linear regression."
-UNKNOWN: Final = "No marks: the posterior's prediction has no finite value."
+UNKNOWN: Final = "Where marks are missing, a prediction or the quantity is not finite."
 
 
 @styled
@@ -63,7 +66,8 @@ def draw_forecast(table: Table) -> Figure:
     order = [name for name in FAMILY_LABELS if name in family]
     families = [*order, *sorted(set(family) - set(order))]
     n_lines = -(-len(families) // 2)
-    height = 0.55 + ROW * len(candidates) + LEGEND_LINE * n_lines
+    row = max(LEAST_ROW, MARK * len(families) / SPREAD)
+    height = 0.55 + row * len(candidates) + LEGEND_LINE * n_lines
     figure = Figure(figsize=(ONE_COLUMN, height), layout="constrained")
     axes = figure.subplots()
     axes.axvline(1.0, color="0.5", linewidth=0.6, zorder=0.5)

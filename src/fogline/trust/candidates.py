@@ -11,7 +11,8 @@ log-normal it is r of ln value. Else it is r times the median prediction, and st
 outcomes: right to first order in r, as for a survey that is planned for the value expected now.
 
 Lists of single absorbers, limits and covariances can't be candidates. What a list would bring is
-at least what its counts in bins bring (``path``).
+at least what its counts in bins bring (``path``). A candidate's ``scale`` and ``scatter`` are its
+own: a calibration that it would share with a data set of the fit is not known to be shared.
 """
 
 from __future__ import annotations
@@ -372,7 +373,7 @@ class _Sheet:
             meta=meta,
             unit=unit,
             counts=counts,
-            cosmology=Cosmology(**{key: float(number) for key, number in block.items()}),
+            cosmology=Cosmology(**{k: float(x) for k, x in block.items() if x is not None}),
             logarithmic=value is not None and value.logarithmic and not counts,
             **{**arrays, "lines": (0,) * len(self.settings.rows)},
         )

@@ -88,7 +88,8 @@ class Shrinkage:
         Expected standard deviation with the candidate over that without, and its Monte Carlo
         error, from importance weights. NaN where quantity or prediction are not finite.
     linear, linear_error : mapping of str to float
-        Upper bound on the ratio from linear regression, and its Monte Carlo error.
+        Upper bound on the ratio from linear regression, and its Monte Carlo error. NaN also where
+        there are fewer than four draws a row.
     pareto_k : ndarray, shape (n_outcomes,)
         Shape of the weights' tail of every outcome; -inf where all weights are equal.
     n_effective : ndarray, shape (n_outcomes,)
