@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose, assert_array_equal
 from scipy import stats
-from scipy.special import gammaln
+from scipy.special import gammaln, polygamma
 
 from fogline.comparison import HEADLINES
 from fogline.datasets import hypothetical
@@ -141,6 +141,25 @@ def test_strong_candidates_are_unreliable_and_bounded_by_regression():
     for name, ratio in exact.items():
         assert found.best(name) == (found.linear[name], found.linear_error[name])
         assert abs(found.best(name)[0] - ratio) < 4 * found.linear_error[name]
+
+
+def test_regression_follows_logarithms():
+    """Of ln rate, counted so long that weights fail: var(ln rate | n) = ψ'(a + n)."""
+    a, t = 9.0, 3000.0
+    rng = np.random.default_rng(10)
+    rate = rng.gamma(a, 1.0, 4000)
+    data = hypothetical("lls_incidence", [3.0], per="dz", tau_min=2.0)
+    data = dataclasses.replace(data, counts=True, observed=np.ones(1), search_path=t * np.ones(1))
+    likelihood = Likelihood.from_datasets([data])
+    found = expected_shrinkage(t * rate[:, None], likelihood, {"ln": np.log(rate)}, rng)
+    assert found.unreliable
+    n = rng.poisson(t * rng.gamma(a, 1.0, 100_000))
+    exact = np.sqrt(np.mean(polygamma(1, a + n)) / polygamma(1, a))
+    assert found.linear["ln"] > exact - 4 * found.linear_error["ln"]
+    assert found.linear["ln"] < 1.1 * exact
+    # A straight line in n would leave most of the curvature of the logarithm.
+    straight = np.sqrt(1.0 - np.corrcoef(rate, np.log(rate))[0, 1] ** 2)
+    assert straight > 3 * exact
 
 
 def test_few_effective_draws_are_unreliable_whatever_k():

@@ -26,17 +26,19 @@ the closed form of a linear Gaussian problem r is right to 2% and within these e
 Where weights fail. A candidate that shrinks errors by much leaves few draws with any weight. Where
 more than `MOST_FAILED` of the outcomes have a Pareto k of at least `WORST_K`, or as many have fewer
 than `LEAST_EFFECTIVE` effective draws, the shrinkage is `unreliable`, and `linear` stands in its
-place: the root of the residual variance of q after linear regression on y, over pairs (θ_i, y_i).
-It is exact for linear Gaussian problems, needs no weights, and is an upper bound otherwise, since
+place: the root of the residual variance of q after linear regression on y and ln y (y² where y may
+be negative), over pairs (θ_i, y_i). It is exact for linear Gaussian problems, needs no weights, and
+is an upper bound otherwise, since
 
     E_y[sd(q | y)] ≤ E_y[var(q | y)]^1/2 ≤ residual of any regression of q on y:
 
-it promises no more than the candidate brings.
+it promises no more than the candidate brings, and may promise much less.
 
 Cautions. A forecast takes the fitted model as true and the stated errors as honest: it knows
 neither of systematic errors that nobody stated, nor of surprises, nor of anything that the model
 cannot represent. A shrinkage is about the width of the posterior; where prior and model make the
-width, more data may well move and widen it.
+width, more data may well move and widen it. Standard deviations are ruled by tails: of a quantity
+that spreads over a large factor, forecast the logarithm.
 """
 
 from __future__ import annotations
@@ -89,7 +91,7 @@ class Shrinkage:
         error, from importance weights. NaN where quantity or prediction are not finite.
     linear, linear_error : mapping of str to float
         Upper bound on the ratio from linear regression, and its Monte Carlo error. NaN also where
-        there are fewer than four draws a row.
+        there are fewer than eight draws a row.
     pareto_k : ndarray, shape (n_outcomes,)
         Shape of the weights' tail of every outcome; -inf where all weights are equal.
     n_effective : ndarray, shape (n_outcomes,)
@@ -362,11 +364,11 @@ def _jackknifed(whole: Array, left_out: Array) -> tuple[Array, Array]:
     n = len(left_out)
     mean = left_out.mean(axis=0)
     error = np.sqrt((n - 1) / n * np.sum((left_out - mean) ** 2, axis=0))
-    return n * whole - (n - 1) * mean, error
+    return np.maximum(n * whole - (n - 1) * mean, 0.0), error
 
 
 def _regression(y: Array, scaled: Array) -> tuple[Array, Array]:
-    """Return the root of the share of variance that linear regression on y leaves, and its error.
+    """Return the root of the share of variance that regression on y leaves, and its error.
 
     Parameters
     ----------
@@ -377,11 +379,9 @@ def _regression(y: Array, scaled: Array) -> tuple[Array, Array]:
     """
     n, n_rows = y.shape
     nan = np.full(scaled.shape[1], np.nan)
-    if n < 4 * (n_rows + 1):
+    if n < 8 * (n_rows + 1):
         return nan, nan
-    spread = y.std(axis=0)
-    x = (y - y.mean(axis=0)) / np.where(spread > 0.0, spread, 1.0)
-    x = np.concatenate([np.ones((n, 1)), x], axis=1)
+    x = np.concatenate([np.ones((n, 1)), _standard(y), _standard(_curved(y))], axis=1)
     finite = np.isfinite(scaled).all(axis=0)
     q = np.where(finite, scaled, 0.0)
     starts = np.linspace(0, n, N_BLOCKS, endpoint=False).astype(int)
@@ -394,6 +394,18 @@ def _regression(y: Array, scaled: Array) -> tuple[Array, Array]:
     )
     ratio, error = _jackknifed(whole, left_out)
     return np.where(finite, ratio, np.nan), np.where(finite, error, np.nan)
+
+
+def _standard(x: Array) -> Array:
+    spread = x.std(axis=0)
+    return np.asarray((x - x.mean(axis=0)) / np.where(spread > 0.0, spread, 1.0))
+
+
+def _curved(y: Array) -> Array:
+    """Return ln y of rows, of y + 1/2 where some are zero, and y² about the mean of the others."""
+    shift = np.where((y > 0.0).all(axis=0), 0.0, 0.5)  # zeros are counts
+    positive = (y >= 0.0).all(axis=0)
+    return np.where(positive, np.log(np.where(positive, y + shift, 1.0)), _standard(y) ** 2)
 
 
 def _residual(xx: Array, xq: Array, qq: Array) -> Array:
