@@ -124,6 +124,34 @@ def check_distributions(
     return sorted(set(faults.found))
 
 
+def check_forecasts(
+    study: Study, path: str = "config", line_of: LineOf = lambda place: 1
+) -> list[Fault]:
+    """Return what is wrong with the candidates that a study would forecast; imports numpy.
+
+    Parameters
+    ----------
+    study : Study
+        From `load_config` or `parse_config`.
+    path, line_of
+        As for `parse_config`.
+
+    Returns
+    -------
+    list of Fault
+    """
+    if not any(analysis.forecasts for analysis in study.analyses.values()):
+        return []
+    from fogline.trust.candidates import candidate_faults
+
+    faults = _Faults(path, line_of)
+    for name, analysis in study.analyses.items():
+        layers = _layers(_chain(name, study.raw["analyses"], faults), study.raw)
+        for place, what in candidate_faults(analysis):
+            faults.add(layers.origin(place), what)
+    return sorted(set(faults.found))
+
+
 class _Faults:
     """Gathers faults by their place in the config."""
 
@@ -246,4 +274,4 @@ def _listed(block: Mapping[str, Any], key: str, place: Place) -> list[Pattern]:
     return [((*place, key, i), item) for i, item in items if item and isinstance(item, str)]
 
 
-__all__ = ["check_distributions", "load_config", "parse_config"]
+__all__ = ["check_distributions", "check_forecasts", "load_config", "parse_config"]

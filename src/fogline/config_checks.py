@@ -7,6 +7,7 @@ from collections.abc import Callable, Iterator, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
+from fogline.config_forecasts import forecast_faults
 from fogline.config_schema import PlacedFault
 from fogline.config_settings import HIGH_COLUMN_PRIORS
 from fogline.cosmology_keys import cosmology_faults
@@ -40,6 +41,7 @@ def block_faults(blocks: Mapping[str, Any], name: str) -> Iterator[PlacedFault]:
     yield from _model_faults(blocks["model"])
     yield from _sampler_faults(blocks, name)
     yield from _derive_faults(blocks["derive"])
+    yield from forecast_faults(blocks["forecasts"])
 
 
 def _increasing(values: Sequence[float], place: Place) -> Iterator[PlacedFault]:

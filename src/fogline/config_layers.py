@@ -12,7 +12,7 @@ from typing import Any, Final
 
 from fogline.yaml_lines import Place
 
-BLOCKS: Final = ("cosmology", "model", "nuisances", "sampler", "derive", "checks")
+BLOCKS: Final = ("cosmology", "model", "nuisances", "sampler", "derive", "checks", "forecasts")
 """Blocks that an analysis may override."""
 
 _BESIDE_DISTRIBUTION: Final = ("log_nhi",)  # not an argument: says where the distribution stands

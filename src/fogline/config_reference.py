@@ -17,6 +17,9 @@ from fogline.config_schema import Schema, expectation, resolve, schema
 from fogline.yaml_lines import Place, dotted
 
 BEGIN: Final = "<!-- keys: made by python -m fogline.config_reference -->"
+NAMED: Final = ("analyses", "forecasts")
+"""Blocks whose keys are names that the user chooses."""
+
 END: Final = "<!-- end of keys -->"
 
 
@@ -48,9 +51,11 @@ def _keys(node: Schema, place: Place) -> Iterator[tuple[Place, Schema, bool]]:
             continue
         if child.get("$ref") != "#/$defs/distribution":
             yield from _keys(resolve(child, {}), (*place, key))
-        if isinstance(inner.get("additionalProperties"), Mapping) and key == "analyses":
+        if isinstance(inner.get("items"), Mapping) and "properties" in inner["items"]:
+            yield from _keys(inner["items"], (*place, f"{key}[]"))
+        if isinstance(inner.get("additionalProperties"), Mapping) and key in NAMED:
             named = (*place, key, "NAME")
-            yield named, resolve(inner["additionalProperties"]), True
+            yield named, resolve(inner["additionalProperties"]), key == "analyses"
             yield from _keys(resolve(inner["additionalProperties"]), named)
 
 

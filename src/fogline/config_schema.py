@@ -161,9 +161,10 @@ def missing_faults(node: Schema, value: Any, place: Place) -> Iterator[PlacedFau
         if key not in value:
             help = resolve(properties[key]).get("description", "").rstrip(".")
             yield place, f"lacks '{dotted((*place, key))}' ({help[0].lower()}{help[1:]})"
+    others = node.get("additionalProperties")
+    others = others if isinstance(others, Mapping) else {}
     for key in value:
-        if key in properties:
-            yield from missing_faults(properties[key], value[key], (*place, key))
+        yield from missing_faults(properties.get(key, others), value[key], (*place, key))
 
 
 def with_defaults(node: Schema, value: Any) -> Any:

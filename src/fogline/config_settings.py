@@ -7,6 +7,7 @@ from typing import Any, Final
 
 from fogline.settings import (
     AnalysisSettings,
+    CandidateSettings,
     ChecksSettings,
     CosmologySettings,
     DeriveSettings,
@@ -87,6 +88,21 @@ def analysis_settings(
             false_alarm=float(blocks["checks"]["false_alarm"]),
             groups={name: tuple(group) for name, group in blocks["checks"]["groups"].items()},
         ),
+        forecasts=tuple(
+            _candidate(key, candidate)
+            for key, candidate in blocks["forecasts"].items()
+            if candidate is not None
+        ),
+    )
+
+
+def _candidate(name: str, block: Mapping[str, Any]) -> CandidateSettings:
+    return CandidateSettings(
+        name=name,
+        quantity=block["quantity"],
+        meta=dict(block.get("meta") or {}),
+        unit=block.get("unit") or "",
+        rows=tuple(dict(row) for row in block["rows"]),
     )
 
 

@@ -69,10 +69,13 @@ class HeadlineDraws:
     values: Array
 
     @property
-    def labels(self) -> tuple[str, ...]:
-        """Quantity and redshift as one name, such as ``rho_hi(z=2.5)``."""
-        pairs = zip(self.quantities, self.z, strict=True)
-        return tuple(f"{quantity}(z={z:.3g})" for quantity, z in pairs)
+    def keys(self) -> tuple[str, ...]:
+        """Quantity and redshift as one name, such as ``rho_hi@2.5``."""
+        return tuple(f"{q}@{z:g}" for q, z in zip(self.quantities, self.z, strict=True))
+
+    def by_key(self) -> dict[str, Array]:
+        """Return the draws of every quantity, each (n_draws,), by `keys`."""
+        return dict(zip(self.keys, self.values.T, strict=True))
 
 
 def headline_draws(draws: Draws) -> HeadlineDraws:

@@ -165,8 +165,8 @@ def load_fit(path: str | Path, analysis: AnalysisSettings | None = None) -> Fit:
     ----------
     path : path-like
     analysis : AnalysisSettings, optional
-        Settings to go on with where sampler or derived grids changed since; those of the file by
-        default. Model, cosmology and data sets are those of the file in any case.
+        Settings to go on with where sampler, derived grids or forecasts changed since; those of
+        the file by default. Model, cosmology and data sets are those of the file in any case.
     """
     with h5py.File(path, "r") as file:
         stored = analysis_from_plain(json.loads(file.attrs["analysis"]))
@@ -176,7 +176,11 @@ def load_fit(path: str | Path, analysis: AnalysisSettings | None = None) -> Fit:
         blocks = tuple(_read_block(group) for group in groups)
     if analysis is not None:
         stored = replace(
-            stored, sampler=analysis.sampler, derive=analysis.derive, checks=analysis.checks
+            stored,
+            sampler=analysis.sampler,
+            derive=analysis.derive,
+            checks=analysis.checks,
+            forecasts=analysis.forecasts,
         )
     setting = setting_of(stored)
     response = Response(setting.distribution, datasets, blocks, setting.doppler_grid)

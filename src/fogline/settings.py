@@ -137,6 +137,18 @@ class ChecksSettings:
 
 
 @dataclass(frozen=True)
+class CandidateSettings:
+    """Rows that somebody might measure, to be forecast; `fogline.trust.candidates` reads them."""
+
+    name: str
+    quantity: str
+    meta: Mapping[str, Any]  # as a constraint file of the quantity has it
+    unit: str  # of value and errors; empty where dimensionless
+    # Each with z or z_lo, z_hi, columns or wavelengths, and error, relative_error or path.
+    rows: tuple[Mapping[str, Any], ...]
+
+
+@dataclass(frozen=True)
 class AnalysisSettings:
     """One named fit: data sets, model, sampler, derived quantities."""
 
@@ -149,6 +161,7 @@ class AnalysisSettings:
     # By data set: scale, scatter, student_dof, as the file's meta may state them too.
     nuisances: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
     checks: ChecksSettings = field(default_factory=ChecksSettings)
+    forecasts: tuple[CandidateSettings, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -182,6 +195,10 @@ def analysis_from_plain(plain: Mapping[str, Any]) -> AnalysisSettings:
         derive=DeriveSettings(**{k: _tupled(v) for k, v in plain["derive"].items()}),
         nuisances=plain.get("nuisances", {}),
         checks=_checks(plain.get("checks", {})),
+        forecasts=tuple(
+            CandidateSettings(**{k: _tupled(v) for k, v in candidate.items()})
+            for candidate in plain.get("forecasts", ())
+        ),
     )
 
 

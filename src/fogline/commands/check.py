@@ -88,7 +88,7 @@ def _side_faults(paths: Iterable[str]) -> list[Fault]:
 
 
 def _check_config(path: str, faults: list[Fault]) -> Study | None:
-    from fogline.config import check_distributions, parse_config
+    from fogline.config import check_distributions, check_forecasts, parse_config
     from fogline.yaml_lines import read_yaml
 
     try:
@@ -98,6 +98,7 @@ def _check_config(path: str, faults: list[Fault]) -> Study | None:
         faults.extend(error.faults)
         return None
     faults.extend(check_distributions(study, path, document.line))
+    faults.extend(check_forecasts(study, path, document.line))
     return study
 
 

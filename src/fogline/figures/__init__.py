@@ -27,6 +27,7 @@ from fogline.figures import (
     transmission,
 )
 from fogline.figures.comparison import draw_comparison
+from fogline.figures.forecast import draw_forecast
 from fogline.figures.inputs import FigureInputs
 from fogline.figures.style import STYLE, dataset_styles
 from fogline.tables import write_whole
@@ -72,4 +73,11 @@ def save(figure: Figure, path: str | Path) -> None:
             write_whole(f"{path}.{form}", partial(figure.savefig, format=form, metadata=metadata))
 
 
-__all__ = ["FIGURES", "FigureInputs", "dataset_styles", "draw_comparison", "save"]
+__all__ = [
+    "FIGURES",
+    "FigureInputs",
+    "dataset_styles",
+    "draw_comparison",
+    "draw_forecast",
+    "save",
+]
