@@ -24,6 +24,7 @@ include: "workflow/rules/derive.smk"
 include: "workflow/rules/figures.smk"
 include: "workflow/rules/compare.smk"
 include: "workflow/rules/report.smk"
+include: "workflow/rules/tension.smk"
 
 
 rule all:

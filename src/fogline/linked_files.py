@@ -36,14 +36,19 @@ def linked_files(constraint_file: str | os.PathLike[str]) -> list[str]:
     ----------
     constraint_file : path-like
     """
-    meta = _meta(constraint_file)
+    meta = header_meta(constraint_file)
     named = [meta[key] for key in LINKS if isinstance(meta.get(key), str)]
     paths = [linked_path(constraint_file, name) for name in named]
     return [path for path in paths if os.path.isfile(path)]
 
 
-def _meta(path: str | os.PathLike[str]) -> dict[str, Any]:
-    """Return the meta of an ECSV header; empty where there is none to be read."""
+def header_meta(path: str | os.PathLike[str]) -> dict[str, Any]:
+    """Return the meta of an ECSV header; empty where there is none to be read.
+
+    Parameters
+    ----------
+    path : path-like
+    """
     lines = []
     try:
         with open(path, encoding="utf-8") as file:

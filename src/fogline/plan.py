@@ -12,7 +12,8 @@ from pathlib import Path
 from typing import Any, Final
 
 from fogline.config import parse_config
-from fogline.settings import Study
+from fogline.linked_files import header_meta
+from fogline.settings import AnalysisSettings, Study
 from fogline.yaml_lines import read_yaml
 
 DERIVED: Final = (
@@ -40,6 +41,10 @@ CHECKS: Final = (
     "constraints",
 )
 """Tables that `fogline.trust.checking` writes for every analysis."""
+
+TENSION_TABLES: Final = ("tension", "hold_out_shifts", "pairwise")
+TENSION_FIGURES: Final = ("tension", "hold_out_shifts")
+"""What `fogline.trust.tension` writes on request."""
 
 EXPORTS: Final = (
     "column_distribution_samples.ecsv",
@@ -69,6 +74,36 @@ FIGURES: Final = (
     "prior_posterior",
 )
 """Names of the figures, in the order of `fogline.figures.FIGURES`."""
+
+
+def hold_out_groups(analysis: AnalysisSettings) -> dict[str, tuple[str, ...]]:
+    """Return what hold-outs leave out: every data set alone, and the config's groups.
+
+    Parameters
+    ----------
+    analysis : AnalysisSettings
+
+    Returns
+    -------
+    dict
+        Data sets by the name of the group.
+    """
+    stems = [Path(path).stem for path in analysis.datasets]
+    return {stem: (stem,) for stem in stems} | dict(analysis.checks.groups)
+
+
+def kinds_of(analysis: AnalysisSettings) -> dict[str, tuple[str, ...]]:
+    """Return the data sets of every quantity, as the headers of their files say.
+
+    Parameters
+    ----------
+    analysis : AnalysisSettings
+    """
+    kinds: dict[str, tuple[str, ...]] = {}
+    for path in analysis.datasets:
+        quantity = str(header_meta(path).get("quantity", "unknown"))
+        kinds[quantity] = (*kinds.get(quantity, ()), Path(path).stem)
+    return kinds
 
 
 def read_study(config: Mapping[str, Any], files: Sequence[str | Path]) -> Study:

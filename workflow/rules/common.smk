@@ -3,7 +3,18 @@
 import os
 import sys
 
-from fogline.plan import CHECKS, DERIVED, EXPORTS, FIGURES, closing_words, read_study
+from fogline.plan import (
+    CHECKS,
+    DERIVED,
+    EXPORTS,
+    FIGURES,
+    TENSION_FIGURES,
+    TENSION_TABLES,
+    closing_words,
+    hold_out_groups,
+    kinds_of,
+    read_study,
+)
 from fogline.faults import InputError
 from fogline.linked_files import linked_files
 from fogline.provenance import code_hash, settings_hash
@@ -26,6 +37,8 @@ COMPARISON = ["results/comparison/figures/shifts.pdf"] if len(ANALYSES) > 1 else
 wildcard_constraints:
     analysis=r"[A-Za-z0-9_-]+",
     ensemble=r"\d+",
+    group=r"[A-Za-z0-9_.-]+",
+    kind=r"[a-z_]+",
 
 
 def analysis_of(wildcards):
