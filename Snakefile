@@ -25,6 +25,7 @@ include: "workflow/rules/figures.smk"
 include: "workflow/rules/compare.smk"
 include: "workflow/rules/report.smk"
 include: "workflow/rules/tension.smk"
+include: "workflow/rules/calibration.smk"
 
 
 rule all:

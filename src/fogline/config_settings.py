@@ -7,6 +7,7 @@ from typing import Any, Final
 
 from fogline.settings import (
     AnalysisSettings,
+    CalibrationSettings,
     CandidateSettings,
     ChecksSettings,
     CosmologySettings,
@@ -84,14 +85,23 @@ def analysis_settings(
             dust=None if derive["dust"] is None else dict(derive["dust"]),
         ),
         nuisances=blocks["nuisances"],
-        checks=ChecksSettings(
-            false_alarm=float(blocks["checks"]["false_alarm"]),
-            groups={name: tuple(group) for name, group in blocks["checks"]["groups"].items()},
-        ),
+        checks=_checks(blocks["checks"]),
         forecasts=tuple(
             _candidate(key, candidate)
             for key, candidate in blocks["forecasts"].items()
             if candidate is not None
+        ),
+    )
+
+
+def _checks(block: Mapping[str, Any]) -> ChecksSettings:
+    calibration = block["calibration"]
+    whole = ("replicates", "batch", "draws")
+    return ChecksSettings(
+        false_alarm=float(block["false_alarm"]),
+        groups={name: tuple(group) for name, group in block["groups"].items()},
+        calibration=CalibrationSettings(
+            **{key: int(calibration[key]) for key in whole}, modes=tuple(calibration["modes"])
         ),
     )
 

@@ -27,7 +27,7 @@ from fogline.moves import CountedStretchMove, IndependenceMove, LocalMove, Tally
 from fogline.progress import Progress, Silent
 from fogline.settings import SamplerSettings
 from fogline.stopping import ending, look, status, worth_a_look
-from fogline.warmup import fit_round, next_round, prior_draws, rescue, schedule
+from fogline.warmup import first_state, fit_round, next_round, rescue, schedule
 
 __all__ = ["EnsembleResult", "run_ensemble"]
 
@@ -52,6 +52,7 @@ def run_ensemble(
     checkpoint: Path | None = None,
     fingerprint: str = "",
     progress: Progress | None = None,
+    around: Array | None = None,
 ) -> EnsembleResult:
     """Sample a posterior whose prior is a unit normal in every direction.
 
@@ -71,6 +72,9 @@ def run_ensemble(
         Of data, model and settings: a checkpoint with another one is left aside.
     progress : Progress, optional
         Told how the run goes; nobody by default.
+    around : ndarray, shape (n_dim,), optional
+        Point near which all walkers begin. By default they are draws of the prior, so that
+        ensembles start independently and their agreement means something.
 
     Returns
     -------
@@ -84,7 +88,7 @@ def run_ensemble(
     """
     # One BLAS thread: products are then rounded alike in every run, and ensembles do not compete.
     with threadpool_limits(1, user_api="blas"):
-        run = _Run(guarded(log_prob), n_dim, settings, index, progress or Silent())
+        run = _Run(guarded(log_prob), n_dim, settings, index, progress or Silent(), around)
         return run.to_end(Keeper(checkpoint, f"{fingerprint}/{index}"))
 
 
@@ -98,6 +102,7 @@ class _Run:
         settings: SamplerSettings,
         index: int,
         progress: Progress,
+        around: Array | None,
     ) -> None:
         if settings.walkers < 2 * n_dim:
             raise ValueError(f"{n_dim} parameters need {2 * n_dim} walkers or more")
@@ -106,6 +111,7 @@ class _Run:
         self.settings = settings
         self.index = index
         self.progress = progress
+        self.around = around
         self.rounds = schedule(settings)
         streams = np.random.SeedSequence(settings.seed).spawn(max(settings.ensembles, index + 1))
         # Streams: the start, emcee's RandomState, the importance draws, one for each fit. None
@@ -118,7 +124,9 @@ class _Run:
         if message:
             self.progress.note(message)
         if state is None:
-            state = prior_draws(self.log_prob, self.settings.walkers, self.n_dim, *self.streams[:2])
+            start, steps = self.streams[:2]
+            n_walkers = self.settings.walkers
+            state = first_state(self.log_prob, n_walkers, self.n_dim, start, steps, self.around)
             self.clear(state)
         else:
             self.progress.note(f"resumed from a checkpoint, {self.stage(state)} step {state.step}")

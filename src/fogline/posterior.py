@@ -36,11 +36,15 @@ class Posterior:
         Prior of the parameters.
     likelihood : Likelihood
         Likelihood of the concatenated rows.
+    inside : callable, optional
+        Region of predictions, (n, n_rows) -> (n,) of bool, outside which the prior is cut to zero
+        (its normalisation is left as it is); none by default.
     """
 
     response: Response
     prior: Prior
     likelihood: Likelihood
+    inside: Callable[[Array], NDArray[np.bool_]] | None = None
 
     @cached_property
     def walkers(self) -> WalkerResponse:
@@ -122,7 +126,11 @@ class Posterior:
             kept = theta if usable.all() else theta[usable]
             with np.errstate(over="ignore", divide="ignore", invalid="ignore"):
                 nuisances = kept[:, self.response.n_parameters :]
-                out[usable] = self.likelihood.ln_total(predict(kept), nuisances)
+                predicted = predict(kept)
+                ln_p = self.likelihood.ln_total(predicted, nuisances)
+                if self.inside is not None:
+                    ln_p = np.where(self.inside(predicted), ln_p, -np.inf)
+                out[usable] = ln_p
         _raise_on_nan(out[:, None], theta)
         return out
 

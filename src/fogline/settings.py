@@ -128,12 +128,23 @@ class DeriveSettings:
 
 
 @dataclass(frozen=True)
+class CalibrationSettings:
+    """Calibration by simulation."""
+
+    replicates: int = 200
+    batch: int = 5  # replicates of one job
+    draws: int = 99  # among which the truth is ranked
+    modes: tuple[str, ...] = ("prior", "posterior")
+
+
+@dataclass(frozen=True)
 class ChecksSettings:
     """How a fit is questioned."""
 
     false_alarm: float = 0.05  # chance that consistent data raise any flag
     # Data sets that are left out together, by the name of their group.
     groups: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
+    calibration: CalibrationSettings = field(default_factory=CalibrationSettings)
 
 
 @dataclass(frozen=True)
@@ -204,7 +215,9 @@ def analysis_from_plain(plain: Mapping[str, Any]) -> AnalysisSettings:
 
 def _checks(plain: Mapping[str, Any]) -> ChecksSettings:
     groups = {name: tuple(members) for name, members in plain.get("groups", {}).items()}
-    return ChecksSettings(**{**plain, "groups": groups})
+    calibration = {k: _tupled(v) for k, v in plain.get("calibration", {}).items()}
+    own = {"groups": groups, "calibration": CalibrationSettings(**calibration)}
+    return ChecksSettings(**{**plain, **own})
 
 
 def _tupled(value: Any) -> Any:

@@ -23,6 +23,9 @@ LogProb = Callable[[Array], Array]
 START_ROUNDS: Final = 100
 """Draws from the prior for a walker to find a finite posterior."""
 
+NEAR: Final = 1e-3
+"""Spread of walkers around a given point; stretch moves widen it to that of the posterior."""
+
 FIT_SAMPLES: Final = 20_000
 """Samples that a mixture is fitted to, at most."""
 
@@ -58,14 +61,15 @@ def next_round(state: RunState, settings: SamplerSettings) -> int:
     return state.round + 1
 
 
-def prior_draws(
+def first_state(
     log_prob: LogProb,
     n_walkers: int,
     n_dim: int,
     start: np.random.SeedSequence,
     steps: np.random.SeedSequence,
+    around: Array | None = None,
 ) -> RunState:
-    """Return walkers drawn from the prior, wider than any posterior.
+    """Return walkers drawn from the prior, wider than any posterior; or all near one point.
 
     Parameters
     ----------
@@ -75,6 +79,8 @@ def prior_draws(
         Shape of the ensemble.
     start, steps : SeedSequence
         Streams of the start and of emcee's RandomState.
+    around : ndarray, shape (n_dim,), optional
+        The point; none by default.
 
     Returns
     -------
@@ -86,16 +92,22 @@ def prior_draws(
         If no draw has a finite posterior.
     """
     rng = np.random.default_rng(start)
-    coords = rng.standard_normal((n_walkers, n_dim))
+
+    def draw(n: int) -> Array:
+        noise = rng.standard_normal((n, n_dim))
+        return noise if around is None else around + NEAR * noise
+
+    coords = draw(n_walkers)
     ln_prob = log_prob(coords)
     for _ in range(START_ROUNDS):
         lost = np.flatnonzero(~np.isfinite(ln_prob))
         if not len(lost):
             break
-        coords[lost] = rng.standard_normal((len(lost), n_dim))
+        coords[lost] = draw(len(lost))
         ln_prob[lost] = log_prob(coords[lost])
     if not np.isfinite(ln_prob).any():
-        raise ValueError("no draw from the prior has a finite posterior")
+        where = "from the prior" if around is None else "near the given start"
+        raise ValueError(f"no draw {where} has a finite posterior")
     random_state = np.random.RandomState(np.random.MT19937(steps)).get_state()
     return RunState(0, 0, coords, ln_prob, random_state, 1, None, *no_draws(coords), {})
 

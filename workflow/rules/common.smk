@@ -39,6 +39,8 @@ wildcard_constraints:
     ensemble=r"\d+",
     group=r"[A-Za-z0-9_.-]+",
     kind=r"[a-z_]+",
+    mode="prior|posterior",
+    batch=r"\d+",
 
 
 def analysis_of(wildcards):

@@ -139,7 +139,7 @@ def _map(
     axes.imshow(grid, cmap=cmap, vmin=1.6 * low, vmax=1.6 * REACH, aspect="auto")
     for (i, j), value in np.ndenumerate(grid):
         if np.isfinite(value):
-            text = f"{value:.1f}".replace("-", "−")
+            text = f"{round(value, 1) + 0.0:.1f}".replace("-", "−")  # no minus zero
             axes.text(j, i, text, ha="center", va="center", fontsize=SMALL)
     axes.set_yticks(range(len(rows)), rows)
     axes.set_xticks(range(len(columns)), columns, rotation=90)

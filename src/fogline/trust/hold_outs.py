@@ -40,8 +40,8 @@ Array = NDArray[np.float64]
 DRAWS: Final = 4000
 """Draws of a fit that predict what was left out."""
 
-LEAST_CHANGE: Final = 0.02
-"""Relative change of the variance below which a shift has no σ."""
+LEAST_CHANGE: Final = 0.1
+"""Relative change of the variance below which a shift has no σ: widths of draws are good to 4%."""
 
 STREAM: Final = 1_000_081
 """Spawn key of the random streams of hold-outs."""
