@@ -24,6 +24,7 @@ include: "workflow/rules/derive.smk"
 include: "workflow/rules/figures.smk"
 include: "workflow/rules/compare.smk"
 include: "workflow/rules/report.smk"
+include: "workflow/rules/forecast.smk"
 include: "workflow/rules/tension.smk"
 include: "workflow/rules/calibration.smk"
 
@@ -40,6 +41,7 @@ rule all:
             figure=FIGURES,
         ),
         expand("results/{analysis}/exports/{export}", analysis=ANALYSES, export=EXPORTS),
+        FORECASTS,
         COMPARISON,
     localrule: True
 

@@ -31,6 +31,11 @@ except InputError as error:
 
 ANALYSES = list(STUDY.analyses)
 TABLES = ["parameters", *DERIVED, *CHECKS]
+FORECASTS = [
+    f"results/{analysis}/figures/forecast.pdf"
+    for analysis, settings in STUDY.analyses.items()
+    if settings.forecasts
+]
 COMPARISON = ["results/comparison/figures/shifts.pdf"] if len(ANALYSES) > 1 else []
 
 
