@@ -171,12 +171,12 @@ def wrong():
 def test_a_calibration_error_of_a_fifth_is_found(wrong):
     fit, joint = wrong
     assert joint.converged, joint.reasons
-    found = [hold_out(fit, joint.theta, name, [name]) for name in ("more_lls", "dla")]
+    found = [hold_out(fit, joint.theta, name, [name]) for name in ("more_lls", "density")]
     table = tension_table(found, 0.05)
     by_group = {str(row["group"]): row for row in table}
     assert by_group["more_lls"]["flag"] == "tension"
     assert by_group["more_lls"]["offset"] > 3.0  # data above the prediction of the others
-    assert by_group["dla"]["flag"] == ""
+    assert by_group["density"]["flag"] == ""
     moved = shift_table(found)
     incidence = moved[(moved["group"] == "more_lls") & (moved["quantity"] == "lx_lls_tau2")]
     assert np.nanmax(incidence["shift_sigma"]) > 2.5
