@@ -27,6 +27,7 @@ include: "workflow/rules/report.smk"
 include: "workflow/rules/forecast.smk"
 include: "workflow/rules/tension.smk"
 include: "workflow/rules/calibration.smk"
+include: "workflow/rules/agreement.smk"
 
 
 rule all:

@@ -103,6 +103,7 @@ def _checks(block: Mapping[str, Any]) -> ChecksSettings:
         calibration=CalibrationSettings(
             **{key: int(calibration[key]) for key in whole}, modes=tuple(calibration["modes"])
         ),
+        nested=bool(block["nested"]),
     )
 
 

@@ -145,6 +145,7 @@ class ChecksSettings:
     # Data sets that are left out together, by the name of their group.
     groups: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
     calibration: CalibrationSettings = field(default_factory=CalibrationSettings)
+    nested: bool = False  # a nested sampler beside the tempered populations
 
 
 @dataclass(frozen=True)

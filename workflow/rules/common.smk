@@ -46,6 +46,7 @@ wildcard_constraints:
     kind=r"[a-z_]+",
     mode="prior|posterior",
     batch=r"\d+",
+    run=r"\d+",
 
 
 def analysis_of(wildcards):

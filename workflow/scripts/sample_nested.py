@@ -1,0 +1,13 @@
+"""Sample a posterior by another method than ensembles."""
+
+from fogline.jobs import job, settings_of
+
+with job(snakemake.log[0]):
+    from fogline.response_file import load_fit
+    from fogline.trust.agreeing import write_nested
+
+    write_nested(
+        load_fit(snakemake.input.response, settings_of(snakemake)),
+        int(snakemake.wildcards.run),
+        snakemake.output.draws,
+    )
