@@ -60,9 +60,9 @@ ATTEMPTS: Final = 500
 """Draws of the prior, and how often so many are made, for one truth within reach."""
 
 WALKERS: Final = 128
-TARGET_ESS: Final = 1200
+TARGET_ESS: Final = 800
 MAX_STEPS: Final = 6000
-WARM_UP: Final = ((400, 4), (200, 6), (200, 8), (200, 8))
+WARM_UP: Final = ((300, 4), (150, 6), (200, 8))
 """Steps and mixture components of the rounds of a replicate's warm-up."""
 
 
