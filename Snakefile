@@ -38,6 +38,9 @@ rule all:
             figure=FIGURES,
         ),
         expand("results/{analysis}/exports/{export}", analysis=ANALYSES, export=EXPORTS),
+        expand(
+            "results/{analysis}/summary.{form}", analysis=ANALYSES, form=["html", "md"]
+        ),
         COMPARISON,
     localrule: True
 

@@ -29,7 +29,7 @@ STYLE: Final = (
     "li.bad{border-color:#c00000!important}"
     ".wide{overflow-x:auto}table{border-collapse:collapse;font-size:.94em;overflow-wrap:normal}"
     "th,td{padding:.25em .7em;text-align:right;border-bottom:1px solid #ddd;vertical-align:top}"
-    "thead th{border-bottom:2px solid #444}.text{text-align:left}"
+    "th small{font-weight:normal}thead th{border-bottom:2px solid #444}.text{text-align:left}"
     "td.number{white-space:nowrap}.errors{display:inline-block;text-align:left;font-size:.75em;"
     "line-height:1.05;vertical-align:middle}"
     "figure{margin:1.2em 0}img{max-width:100%;height:auto}figcaption,small{color:#444}"
@@ -103,9 +103,9 @@ def _html_sections(summary: Summary, folder: Path) -> Iterator[str]:
     if len(summary.steps) > 1:
         items = "".join(
             f"<li><strong>{html.escape(step.title)}.</strong> {_html(step.text)}</li>\n"
-            for step in summary.steps
+            for step in summary.steps[1:]
         )
-        yield _section("next", "Next steps", f"<ol>\n{items}</ol>\n")
+        yield _section("next", "After that", f"<ol>\n{items}</ol>\n")
     yield _section("numbers", "Main numbers", _html_numbers(summary.numbers))
     yield _section("data", "Data sets", _html_datasets(summary.datasets))
     items = "".join(f"<li>{_html(caution)}</li>\n" for caution in summary.cautions)
@@ -211,8 +211,8 @@ def _markdown_lines(summary: Summary) -> Iterator[str]:
     for i, line in enumerate(summary.verdict, 1):
         yield f"{i}. **{line.question} {line.answer}.** {_md(line.text)}"
     if len(summary.steps) > 1:
-        yield "\n## Next steps\n"
-        for i, step in enumerate(summary.steps, 1):
+        yield "\n## After that\n"
+        for i, step in enumerate(summary.steps[1:], 1):
             yield f"{i}. **{step.title}.** {_md(step.text)}"
     yield "\n## Main numbers\n"
     yield "| quantity | z | value | definition | mind |\n|---|---:|---:|---|---|"

@@ -254,7 +254,7 @@ def _tension(evidence: Evidence) -> str:
         f"{float(worst['p_value']):.2g} ({float(worst['sigma']):.1f}σ), common offset "
         f"{float(worst['offset']):+.1f}σ, {worst['how']}."
     )
-    if "converged" in worst.colnames and not all(evidence.tension["converged"]):
+    if "converged" in worst.colnames and not all(worst.table["converged"]):
         text += " Some of their own fits have not converged."
     if evidence.stale_tension:
         text += f" They are of an earlier fit; run `{HOLD_OUTS}` again."

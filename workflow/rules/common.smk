@@ -3,7 +3,15 @@
 import os
 import sys
 
-from fogline.plan import CHECKS, DERIVED, EXPORTS, FIGURES, closing_words, read_study
+from fogline.plan import (
+    CHECKS,
+    DERIVED,
+    EXPORTS,
+    FIGURES,
+    closing_words,
+    hold_outs_hash,
+    read_study,
+)
 from fogline.faults import InputError
 from fogline.linked_files import linked_files
 from fogline.provenance import code_hash, settings_hash
