@@ -45,6 +45,8 @@ class Rounded:
             return self.value
         same = self.plus == self.minus
         errors = f" ± {self.plus}" if same else f" (+{self.plus} −{self.minus})"
+        if self.plus == BEYOND:
+            errors = f" (−{self.minus}, upper end {BEYOND})"
         if not self.power:
             return self.value + errors
         body = f"({self.value}{errors})" if same else self.value + errors
@@ -73,7 +75,8 @@ def rounded(median: float, lo: float, hi: float) -> Rounded:
     if math.isinf(lo):
         return Rounded(BEYOND, "", "", 0)
     if math.isinf(median):
-        return Rounded(f"{BEYOND} (84% of draws above {lo:.2g})", "", "", 0)
+        limit = float(f"{lo:.3g}")
+        return Rounded(f"{BEYOND} (84% of draws above {limit:g})", "", "", 0)
     power = _power(median)
     scale = 10.0**-power
     down, up = (median - lo) * scale, (hi - median) * scale

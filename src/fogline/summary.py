@@ -154,8 +154,11 @@ class Number:
     @property
     def text(self) -> str:
         """Number and unit in plain text."""
-        unit = f" {self.unit}" if self.unit and self.median < math.inf else ""
-        return self.rounded.text + unit
+        text, unit = self.rounded.text, f" {self.unit}" if self.unit else ""
+        if self.median < math.inf:
+            return text + unit
+        # The unit belongs to the limit within the brackets.
+        return f"{text[:-1]}{unit})" if text.endswith(")") else text
 
 
 @dataclass(frozen=True)

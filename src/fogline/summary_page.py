@@ -14,7 +14,7 @@ from itertools import groupby
 from pathlib import Path
 from typing import Final
 
-from fogline.rounding import Rounded
+from fogline.rounding import BEYOND, Rounded
 from fogline.summary import DataSetLine, Number, Summary
 from fogline.tables import write_whole
 
@@ -148,15 +148,11 @@ def _html_numbers(numbers: Sequence[Number]) -> str:
 
 
 def _html_number(number: Rounded) -> str:
-    value = html.escape(number.value)
-    if not number.plus:
-        return value
-    errors = (
-        f" ± {number.plus}"
-        if number.plus == number.minus
-        else f' <span class="errors">+{number.plus}<br>−{number.minus}</span>'
-    )
-    return value + errors + (f" × 10<sup>{number.power}</sup>" if number.power else "")
+    if not number.plus or number.plus in (number.minus, BEYOND):
+        return html.escape(number.text)
+    errors = f'<span class="errors">+{number.plus}<br>−{number.minus}</span>'
+    power = f" × 10<sup>{number.power}</sup>" if number.power else ""
+    return f"{html.escape(number.value)} {errors}{power}"
 
 
 def _html_datasets(datasets: Sequence[DataSetLine]) -> str:
