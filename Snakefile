@@ -43,6 +43,9 @@ rule all:
         ),
         expand("results/{analysis}/exports/{export}", analysis=ANALYSES, export=EXPORTS),
         FORECASTS,
+        expand(
+            "results/{analysis}/summary.{form}", analysis=ANALYSES, form=["html", "md"]
+        ),
         COMPARISON,
     localrule: True
 

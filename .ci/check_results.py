@@ -17,7 +17,7 @@ for folder in analyses:
     tables = ("parameters", *DERIVED, "predictive")
     expected += [folder / "tables" / f"{name}.ecsv" for name in tables]
     expected += [folder / "exports" / name for name in EXPORTS]
-    expected.append(folder / "posterior.nc")
+    expected += [folder / name for name in ("posterior.nc", "summary.html", "summary.md")]
     faults += [f"missing or empty: {p}" for p in expected if not (p.exists() and p.stat().st_size)]
 if len(analyses) < 3:
     faults.append(f"only {len(analyses)} analyses have a verdict")

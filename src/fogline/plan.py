@@ -13,6 +13,7 @@ from typing import Any, Final
 
 from fogline.config import parse_config
 from fogline.linked_files import header_meta
+from fogline.provenance import file_hash, settings_hash
 from fogline.settings import AnalysisSettings, Study
 from fogline.yaml_lines import read_yaml
 
@@ -128,7 +129,7 @@ def read_study(config: Mapping[str, Any], files: Sequence[str | Path]) -> Study:
 
 
 def closing_words(analyses: Sequence[str], results: str | Path = "results") -> str:
-    """Return the verdict of every analysis and where its results are.
+    """Return the verdict of every analysis and the page to read first.
 
     Parameters
     ----------
@@ -138,12 +139,31 @@ def closing_words(analyses: Sequence[str], results: str | Path = "results") -> s
     """
     lines = []
     for name in analyses:
-        path = Path(results) / name / "convergence.json"
+        folder = Path(results) / name
+        path, page = folder / "convergence.json", folder / "summary.html"
         # A run for a single file need not have come to the verdict.
         if not path.exists():
             continue
         report = json.loads(path.read_text(encoding="utf-8"))
         state = "converged" if report["converged"] else "NOT CONVERGED"
-        lines.append(f"{name}: {state}; see {Path(results) / name}/")
+        lines.append(f"{name}: {state}; see {page if page.exists() else f'{folder}/'}")
         lines += [f"  {reason}" for reason in report["reasons"]]
     return "\n".join(lines)
+
+
+def hold_outs_hash(analysis: str, results: str | Path = "results") -> str:
+    """Return the hash of what hold-outs left of an analysis; empty where they were not run.
+
+    As a parameter of a rule it makes what shows the hold-outs again when they change. As an input
+    they would be made whenever the data change, which only their own target should do.
+
+    Parameters
+    ----------
+    analysis : str
+    results : path-like
+        Folder of the results.
+    """
+    folder = Path(results) / analysis
+    paths = [folder / "tables/tension.ecsv", folder / "figures/tension.png"]
+    found = [file_hash(path) for path in paths if path.is_file()]
+    return settings_hash(*found) if found else ""

@@ -10,6 +10,7 @@ from astropy.table import Table
 from conftest import DATASETS, StudyFolder
 
 from fogline.plan import DERIVED, FIGURES
+from fogline.rounding import rounded
 
 ANALYSES = ("all_data", "without_free_path")
 BANDS = ("median", "lo68", "hi68", "lo95", "hi95")
@@ -20,7 +21,8 @@ def test_every_file_of_the_contract_is_there(finished: StudyFolder, analysis: st
     folder = finished.path / "results" / analysis
     tables = [f"tables/{name}.ecsv" for name in ("parameters", *DERIVED, "predictive")]
     figures = [f"figures/{name}.{form}" for name in FIGURES for form in ("pdf", "png")]
-    for name in ("posterior.nc", "convergence.json", *tables, *figures):
+    pages = ("summary.html", "summary.md")
+    for name in ("posterior.nc", "convergence.json", *pages, *tables, *figures):
         assert (folder / name).stat().st_size > 0, name
 
 
@@ -31,6 +33,17 @@ def test_verdict_is_good_and_printed(finished: StudyFolder) -> None:
         assert report["reasons"] == []
         assert all(p["rhat"] < 1.01 and p["ess_bulk"] >= 800 for p in report["parameters"])
         assert np.isfinite(report["evidence"]["ln_z"])
+
+
+def test_summary_says_what_the_tables_say(finished: StudyFolder) -> None:
+    folder = finished.path / "results" / "all_data"
+    text = (folder / "summary.md").read_text(encoding="utf-8")
+    assert "1. **Converged? Yes.**" in text
+    assert "Hold-outs were not run; `snakemake --cores all hold_outs`" in text
+    table = Table.read(folder / "tables" / "hi_density.ecsv")
+    row = table[np.argmin(np.abs(table["z"] - 3.5))]
+    assert rounded(*(float(row[f"rho_hi_{b}"]) for b in BANDS[:3])).text in text
+    assert all(f"| `{name}` |" in text for name in DATASETS)
 
 
 def test_posterior_file_follows_the_arviz_schema(finished: StudyFolder) -> None:

@@ -58,6 +58,14 @@ def test_comment_in_the_config_reruns_nothing(finished: StudyFolder, tmp_path: P
     assert planned(study) == {}
 
 
+def test_new_hold_outs_make_the_page_again_and_nothing_else(
+    finished: StudyFolder, tmp_path: Path
+) -> None:
+    study = finished.copy(tmp_path / "study")
+    (study.path / "results/all_data/tables/tension.ecsv").write_text("of hold-outs")
+    assert planned(study) == {"summarize": 1}
+
+
 @pytest.mark.parametrize(
     ("module", "first"),
     [("figures/pulls.py", "draw_figures"), ("likelihood/rows.py", "build_response")],

@@ -12,6 +12,7 @@ from fogline.plan import (
     TENSION_TABLES,
     closing_words,
     hold_out_groups,
+    hold_outs_hash,
     kinds_of,
     read_study,
 )
