@@ -3,19 +3,25 @@
 from __future__ import annotations
 
 import dataclasses
+from tempfile import TemporaryDirectory
 
 import numpy as np
 import pytest
+from astropy.table import Table
 
+import small_study
+from fogline.constraint_files import read_constraint_files
 from fogline.cosmology import Cosmology
 from fogline.datasets import hypothetical
 from fogline.distribution import ColumnDistribution
+from fogline.posterior import Posterior
 from fogline.priors import Prior
 from fogline.quantities import Setting
 from fogline.response import build_response
 from fogline.response_file import Fit
 from fogline.settings import EvolutionSettings
 from fogline.trust.calibration import (
+    _Both,
     calibrate,
     quantity_names,
     response_of,
@@ -23,6 +29,7 @@ from fogline.trust.calibration import (
     within_reach,
 )
 from fogline.trust.ranks import rank_table
+from fogline.trust.simulate import simulate
 from small_study import ANALYSIS, in_bins
 
 N_DRAWS = 49
@@ -100,6 +107,43 @@ def test_data_like_those_given_are_ranked_uniformly(fit):
     joint = sample(fit.posterior, sampler_of(fit.analysis.sampler, fit.prior.n_dim, 3)).x
     table = judged(fit, "posterior", joint=joint)
     assert not any(str(flag) for flag in table["flag"])
+
+
+def test_original_and_replicated_data_together_are_the_sum_of_both():
+    """Predictions are made once; the likelihoods are those of two posteriors with one prior."""
+    datasets = small_study.empty_datasets()
+    path = Table({"z_start": [2.0, 2.4], "z_end": [3.4, 3.9]})
+    listed = Table({"z": [2.5, 2.9, 3.2], "log_nhi": [20.4, 20.9, 21.4], "err": [0.1, 0.1, 0.15]})
+    with TemporaryDirectory() as folder:
+        path.meta = {"kind": "sightlines", "source": "invented"}
+        path.write(f"{folder}/path.ecsv", format="ascii.ecsv")
+        listed.meta = {
+            "quantity": "absorber_list",
+            "source": "invented",
+            "survey_path": "path.ecsv",
+            "log_nhi_min": 20.3,
+        }
+        listed.write(f"{folder}/listed.ecsv", format="ascii.ecsv")
+        absorbers = read_constraint_files([f"{folder}/listed.ecsv"])
+    response = build_response(datasets, small_study.SETTING)
+    filled = [
+        dataclasses.replace(
+            data,
+            observed=np.round(response.predict(small_study.THETA)[rows], 0 if data.counts else 9),
+            err_lo=0.1 * response.predict(small_study.THETA)[rows],
+            err_hi=0.1 * response.predict(small_study.THETA)[rows],
+        )
+        for data, rows in zip(datasets, response.slices, strict=True)
+    ]
+    # The list in the middle: rows after it are found all the same.
+    ordered = [*filled[:2], *absorbers, *filled[2:]]
+    made = Fit(ANALYSIS, build_response(ordered, small_study.SETTING), {"inputs": {}})
+    rng = np.random.default_rng(4)
+    again = simulate(made, small_study.THETA, rng)
+    first, second = made.posterior, Posterior.of(response_of(made, again), made.prior)
+    x = 0.3 * rng.standard_normal((40, made.prior.n_dim))
+    both = first.ln_prob(x) + second.ln_prob(x) - made.prior.ln_density(x)
+    np.testing.assert_allclose(_Both(first, second).ln_prob(x), both, rtol=1e-9)
 
 
 def test_reach_is_a_factor_of_all_measurements(fit):

@@ -20,6 +20,7 @@ import json
 import time
 from collections.abc import Callable, Sequence
 from dataclasses import asdict, dataclass, replace
+from functools import cached_property
 from pathlib import Path
 from typing import Any, Final
 
@@ -41,6 +42,7 @@ from fogline.settings import SamplerSettings
 from fogline.tables import write_table, write_whole
 from fogline.trust.ranks import rank_table
 from fogline.trust.simulate import simulate
+from fogline.walkers import WalkerResponse
 
 Array = NDArray[np.float64]
 
@@ -154,7 +156,7 @@ def _replicate(
     if mode == "prior":
         posterior = replace(posterior, inside=within_reach(fit.response.datasets, datasets))
     settings = sampler_of(fit.analysis.sampler, fit.prior.n_dim, int(rng.integers(2**31)))
-    log_prob = posterior.ln_prob if mode == "prior" else _both(fit.posterior, posterior)
+    log_prob = posterior.ln_prob if mode == "prior" else _Both(fit.posterior, posterior).ln_prob
     result = run_ensemble(log_prob, fit.prior.n_dim, settings, 0, around=x)
     samples = result.samples
     chosen = samples[np.linspace(0, len(samples) - 1, n_draws).astype(int)]
@@ -242,18 +244,66 @@ def response_of(fit: Fit, datasets: Sequence[DataSet]) -> Response:
     return replace(fit.response, datasets=tuple(datasets), blocks=tuple(blocks))
 
 
-def _both(first: Posterior, second: Posterior) -> Callable[[Array], Array]:
-    """Return the ln posterior of two sets of data with one prior."""
+@dataclass(frozen=True)
+class _Both:
+    """The posterior of original and replicated data together, predictions made once for both.
 
-    def ln_prob(x: Array) -> Array:
-        total = first.ln_prob(x)
-        more = second.ln_prob(x)
-        # Both hold the prior; infinities of either are kept.
-        with np.errstate(invalid="ignore"):
-            both = total + more - first.prior.ln_density(x)
-        return np.where(np.isfinite(total) & np.isfinite(more), both, -np.inf)
+    Parameters
+    ----------
+    first, second : Posterior
+        With one model and prior; only lists of absorbers have other rows in the second.
+    """
 
-    return ln_prob
+    first: Posterior
+    second: Posterior
+
+    @cached_property
+    def _lists(self) -> WalkerResponse | None:
+        """The response of the second's lists alone."""
+        response = self.second.response
+        kept = [i for i, data in enumerate(response.datasets) if data.role is not None]
+        if not kept:
+            return None
+        few = replace(
+            response,
+            datasets=tuple(response.datasets[i] for i in kept),
+            blocks=tuple(response.blocks[i] for i in kept),
+        )
+        return WalkerResponse(few, self.first.walkers.reference)
+
+    def _second_rows(self, predicted: Array, theta: Array) -> Array:
+        """Return the predictions of the second's rows from those of the first's."""
+        if self._lists is None:
+            return predicted
+        of_lists = self._lists.predict(theta)
+        parts, at = [], 0
+        for data, rows in zip(self.second.response.datasets, self._first_slices, strict=True):
+            if data.role is None:
+                parts.append(predicted[:, rows])
+                continue
+            parts.append(of_lists[:, at : at + data.n_rows])
+            at += data.n_rows
+        return np.concatenate(parts, axis=1)
+
+    @property
+    def _first_slices(self) -> tuple[slice, ...]:
+        return self.first.response.slices
+
+    def ln_prob(self, x: Array) -> Array:
+        """Return ln of prior times both likelihoods, shape (n,); `x` as for `Posterior.ln_prob`."""
+        prior = self.first.prior
+        theta = prior.to_parameters(x)
+        usable = np.flatnonzero(self.first.walkers.in_range(theta))
+        out = np.full(len(x), -np.inf)
+        if len(usable):
+            kept = theta[usable]
+            nuisances = kept[:, self.first.response.n_parameters :]
+            with np.errstate(over="ignore", divide="ignore", invalid="ignore"):
+                predicted = self.first.walkers.predict(kept)
+                out[usable] = self.first.likelihood.ln_total(predicted, nuisances)
+                again = self._second_rows(predicted, kept)
+                out[usable] += self.second.likelihood.ln_total(again, nuisances)
+        return out + prior.ln_density(x)
 
 
 def _quantities(fit: Fit, theta: Array) -> Array:
