@@ -29,7 +29,7 @@ _HOME = {
     "assess": "fogline.convergence",
     "build_fit": "fogline.response_file",
     "build_response": "fogline.response",
-    "check_predictive": "fogline.predictive",
+    "check_predictive": "fogline.trust.predictive",
     "load_config": "fogline.config",
     "load_fit": "fogline.response_file",
     "read_constraint_file": "fogline.constraint_files",

@@ -11,8 +11,8 @@ from numpy.typing import NDArray
 from fogline.datasets import DataSet
 from fogline.derived import write_derived
 from fogline.deriving import make_draws
-from fogline.predictive import row_table, visible_rows
 from fogline.response_file import build_fit, setting_of
+from fogline.row_tables import row_table, visible_rows
 from fogline.settings import AnalysisSettings
 
 Array = NDArray[np.float64]

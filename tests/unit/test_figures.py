@@ -36,10 +36,10 @@ from fogline.figures.data_points import along_columns, along_z, poisson_interval
 from fogline.figures.lya_opacity import to_tau
 from fogline.inputs import with_nuisances
 from fogline.mixture import StudentMixture
-from fogline.predictive import check_predictive, predictive_table
 from fogline.response_file import Fit, build_fit
 from fogline.settings import AnalysisSettings, analysis_from_plain
 from fogline.tables import curve_table, read_table, write_table
+from fogline.trust.predictive import check_predictive, predictive_table
 
 TRUTH = np.array(
     [-9.7, -11.65, -14.3, -16.5, -18.5, -20.15, -21.6, -22.6, -23.75, -26.5, 1.9, 2.0, 0.6]

@@ -9,13 +9,13 @@ from scipy import stats
 
 from fogline.datasets import hypothetical
 from fogline.likelihood import Likelihood
-from fogline.predictive import (
+from fogline.response import build_response
+from fogline.row_tables import row_table
+from fogline.trust.predictive import (
     check_predictive,
     dataset_summary,
     predictive_table,
-    row_table,
 )
-from fogline.response import build_response
 from small_study import SETTING, THETA, empty_datasets
 
 # Draws of a "posterior" as narrow as a point: replicates then scatter by the rows' errors alone.

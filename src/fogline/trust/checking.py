@@ -8,11 +8,11 @@ from fogline.combining import replicate_rng
 from fogline.derived import Draws
 from fogline.deriving import make_draws
 from fogline.posterior_file import read_coordinates, read_draws
-from fogline.predictive import check_predictive, predictive_table
 from fogline.response_file import Fit
 from fogline.tables import write_table
 from fogline.trust.discrepancies import discrepancies, discrepancy_table
 from fogline.trust.information_tables import Array, information_tables
+from fogline.trust.predictive import check_predictive, predictive_table
 
 LEAST_DRAWS = 4000
 """Draws that leaving rows out needs: weights make fewer of them."""

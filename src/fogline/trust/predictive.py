@@ -15,7 +15,6 @@ towards 0.5: a small one is serious, an inconspicuous one is weak evidence (Gelm
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -26,6 +25,7 @@ from numpy.typing import NDArray
 from fogline.datasets import DataSet
 from fogline.likelihood import Likelihood
 from fogline.response import Response
+from fogline.row_tables import row_table, visible_rows
 from fogline.tables import bands
 from fogline.trust.discrepancies import row_level
 from fogline.trust.leave_one_out import LeaveOneOut, leave_one_out
@@ -161,19 +161,3 @@ def dataset_summary(
         flag = "scatter too small" if p_value > 1.0 - DATASET_FLAG else flag
         summary[data.name] = {"p_value": p_value, "flag": flag, "quantity": data.quantity}
     return summary
-
-
-def visible_rows(datasets: Sequence[DataSet]) -> NDArray[np.bool_]:
-    """Return which rows of data sets stand for a measurement or count of their own."""
-    return np.concatenate([data.visible for data in datasets])
-
-
-def row_table(datasets: tuple[DataSet, ...]) -> Table:
-    """Return data set, row, quantity, redshift and observed value of every row."""
-    table = Table()
-    table["dataset"] = [data.name for data in datasets for _ in range(data.n_rows)]
-    table["row"] = np.concatenate([np.cumsum(data.visible) - 1 for data in datasets])
-    table["quantity"] = [data.quantity for data in datasets for _ in range(data.n_rows)]
-    table["z"] = np.concatenate([data.z for data in datasets])
-    table["observed"] = np.concatenate([data.observed for data in datasets])
-    return table
