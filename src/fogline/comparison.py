@@ -12,11 +12,15 @@ from astropy.table import Table
 from fogline.headlines import COLUMNS, HEADLINES, REDSHIFTS
 
 DEFINITION: Final = (
-    "shift_sigma: (median - reference_median) over half the 68% widths of the two analyses added "
-    "in quadrature. The analyses share data, so that their errors are correlated: the shift says "
-    "how far a conclusion moves in units of its error, and is not a significance. ln_evidence: "
-    "ln Z with its numerical error; only analyses of the same data sets may be compared by it."
+    "difference_sigma: error of median - reference_median, from the noise that the analyses do not "
+    "share (first order; data and priors that both have drop out); NaN where that is less than a "
+    "tenth of the error itself. shift_sigma: the difference in units of it, beyond 3 a sign that "
+    "what one analysis has and the other has not does not fit. Different priors and models count "
+    "as independent statements. ln_evidence: ln Z with its numerical error; only analyses of the "
+    "same data sets may be compared by it."
 )
+
+SAME_REDSHIFT: Final = 1e-6
 
 EVIDENCE: Final = "ln_evidence"
 """Quantity of the rows that hold ln Z."""
@@ -30,6 +34,7 @@ DTYPES: Final = {
     "lo68": float,
     "hi68": float,
     "reference_median": float,
+    "difference_sigma": float,
     "shift_sigma": float,
 }
 """Columns of the comparison."""
@@ -54,6 +59,7 @@ class Value:
 def compare(
     results: Mapping[str, Mapping[str, Table]],
     evidences: Mapping[str, tuple[float, float]] | None = None,
+    differences: Mapping[str, Mapping[tuple[str, float], float]] | None = None,
 ) -> Table:
     """Compare the headline quantities of analyses with those of the first.
 
@@ -63,17 +69,21 @@ def compare(
         The derived tables of every analysis by their names; the first analysis is the reference.
     evidences : mapping of str to (float, float), optional
         ln Z of every analysis, and its error.
+    differences : mapping of str to mapping of (str, float) to float, optional
+        Error of the difference of every quantity and redshift from the first analysis, as
+        `fogline.trust.differences` has it. Both errors in quadrature where it is not given.
 
     Returns
     -------
     astropy.table.Table
-        ``analysis, reference, quantity, z, median, lo68, hi68, reference_median, shift_sigma``;
-        NaN shift where an interval reaches beyond what is finite. No rows for one analysis.
+        ``analysis, reference, quantity, z, median, lo68, hi68, reference_median,
+        difference_sigma, shift_sigma``; NaN shift where an interval reaches beyond what is finite.
+        No rows for one analysis.
     """
     reference, *others = results
     wanted = {(value.quantity, value.z): value for value in _values(results[reference])}
     rows = [
-        _row(analysis, reference, value, wanted[value.quantity, value.z])
+        _row(analysis, reference, value, wanted[value.quantity, value.z], differences)
         for analysis in others
         for value in _values(results[analysis])
         if (value.quantity, value.z) in wanted
@@ -91,15 +101,31 @@ def _evidence_row(
     """Return ln Z with its error as the band; a shift in units of that error says nothing."""
     ln_z, error = evidences[analysis]
     base, nan = evidences[reference][0], float("nan")
-    return (analysis, reference, EVIDENCE, nan, ln_z, ln_z - error, ln_z + error, base, nan)
+    return (analysis, reference, EVIDENCE, nan, ln_z, ln_z - error, ln_z + error, base, nan, nan)
 
 
-def _row(analysis: str, reference: str, value: Value, base: Value) -> tuple[object, ...]:
+def _row(
+    analysis: str,
+    reference: str,
+    value: Value,
+    base: Value,
+    differences: Mapping[str, Mapping[tuple[str, float], float]] | None,
+) -> tuple[object, ...]:
+    error = float(np.hypot(value.sigma, base.sigma))
+    if differences is not None:
+        error = _nearest_difference(differences[analysis], value)
     # An error beyond reach would make every shift zero: nothing is said instead.
-    error = np.hypot(value.sigma, base.sigma)
-    shift = (value.median - base.median) / error if np.isfinite(error) else float("nan")
-    numbers = (value.z, value.median, value.lo68, value.hi68, base.median, shift)
+    error = error if np.isfinite(error) else float("nan")
+    shift = (value.median - base.median) / error
+    numbers = (value.z, value.median, value.lo68, value.hi68, base.median, error, shift)
     return (analysis, reference, value.quantity, *numbers)
+
+
+def _nearest_difference(known: Mapping[tuple[str, float], float], value: Value) -> float:
+    """Return the error of a difference; redshifts of tables and draws agree but for rounding."""
+    same = [(abs(z - value.z), error) for (q, z), error in known.items() if q == value.quantity]
+    distance, error = min(same, default=(np.inf, float("nan")))
+    return error if distance < SAME_REDSHIFT else float("nan")
 
 
 def _values(tables: Mapping[str, Table]) -> Iterator[Value]:

@@ -13,14 +13,18 @@ from numpy.typing import NDArray
 from fogline.chains import EnsembleResult
 from fogline.combining import replicate_rng
 from fogline.comparison import EVIDENCE, compare
+from fogline.deriving import make_draws
 from fogline.figures import FIGURES, FigureInputs, draw_comparison, save
-from fogline.posterior_file import read_draws
-from fogline.response_file import Fit
+from fogline.headlines import headline_draws
+from fogline.posterior_file import read_coordinates, read_draws
+from fogline.response_file import Fit, load_fit
 from fogline.tables import read_table, write_table
+from fogline.trust.differences import Influence, difference_sigma, influence_of
 
 Array = NDArray[np.float64]
 
 PRIOR_DRAWS = 4000
+DIFFERENCE_DRAWS = 8000
 
 
 def draw_figures(
@@ -66,6 +70,8 @@ def write_comparison(
     analyses: Sequence[str],
     tables: Sequence[str],
     convergence: Sequence[str],
+    responses: Sequence[str],
+    posteriors: Sequence[str],
     *,
     table: str | Path,
     figure: str | Path,
@@ -80,6 +86,9 @@ def write_comparison(
         Files ``<analysis>/tables/<name>.ecsv`` of all analyses.
     convergence : sequence of str
         Files ``<analysis>/convergence.json``.
+    responses, posteriors : sequence of str
+        Files ``<analysis>/response.h5`` and ``<analysis>/posterior.nc``, in the order of the
+        analyses.
     table, figure : path-like
         Table and figure to write; the figure's suffix is replaced by each form's.
     """
@@ -91,6 +100,24 @@ def write_comparison(
         for path in convergence
     }
     evidences = {name: (report["ln_z"], report["error"]) for name, report in reports.items()}
-    shifts = compare(by_analysis, evidences)
+    found = [
+        _influence(response, posterior)
+        for response, posterior in zip(responses, posteriors, strict=True)
+    ]
+    differences = {
+        name: difference_sigma(found[0], other) for name, other in zip(analyses, found, strict=True)
+    }
+    shifts = compare(by_analysis, evidences, differences)
     write_table(shifts, table)
     save(draw_comparison(shifts[shifts["quantity"] != EVIDENCE]), Path(figure).with_suffix(""))
+
+
+def _influence(response: str, posterior: str) -> Influence:
+    """Return what moves the headline quantities of an analysis."""
+    fit = load_fit(response)
+    theta, x = (
+        read_draws(posterior, DIFFERENCE_DRAWS),
+        read_coordinates(posterior, DIFFERENCE_DRAWS),
+    )
+    headlines = headline_draws(make_draws(theta, fit.setting, fit.analysis))
+    return influence_of(fit, x, theta, headlines)

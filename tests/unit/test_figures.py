@@ -39,6 +39,8 @@ from fogline.mixture import StudentMixture
 from fogline.response_file import Fit, build_fit
 from fogline.settings import AnalysisSettings, analysis_from_plain
 from fogline.tables import curve_table, read_table, write_table
+from fogline.trust.discrepancies import discrepancies, discrepancy_table
+from fogline.trust.information_tables import information_tables
 from fogline.trust.predictive import check_predictive, predictive_table
 
 TRUTH = np.array(
@@ -307,7 +309,8 @@ def fake_study(
     prior = fit.posterior.prior
     ensembles = fake_ensembles(fit, rng, truth)
     samples = np.concatenate([e.samples for e in ensembles])
-    theta = prior.to_parameters(rng.choice(samples, n_draws, replace=False))
+    x = rng.choice(samples, n_draws, replace=False)
+    theta = prior.to_parameters(x)
     draws = Draws(theta, fit.setting, analysis.derive)
     tables = {
         name: curve_table(derived.keys(draws), derived.curves(draws), with_bands=True)
@@ -315,6 +318,11 @@ def fake_study(
     }
     check = check_predictive(fit.response, theta, rng)
     tables["predictive"] = predictive_table(fit.response.datasets, check)
+    found = discrepancies(fit.response.datasets, check.loo)
+    tables["discrepancies"] = discrepancy_table(found, 0.05)
+    tables |= information_tables(
+        fit.posterior, x, theta, lambda t: Draws(t, fit.setting, analysis.derive)
+    )
     # As the figures get them: a file turns empty strings into masked ones, for instance.
     for name, table in tables.items():
         write_table(table, folder / "tables" / f"{name}.ecsv")
@@ -784,7 +792,19 @@ def test_comparison_states_shifts_in_units_of_both_errors(study: FigureInputs) -
     # Equal errors in quadrature are sqrt(2) of one.
     assert_allclose(moved["shift_sigma"], 3.0 / np.sqrt(2.0))
     assert {"tau_eff", "rho_hi", "lx_dla", "log_f[15]"} <= set(moved["quantity"])
-    assert "not a significance" in table.meta["definition"]
+    assert "do not share" in table.meta["definition"]
+    # With errors of differences at hand they are used, and no others.
+    known = {
+        "same": {},
+        "moved": {(row["quantity"], row["z"]): 0.5 * row["difference_sigma"] for row in moved},
+    }
+    again = compare(
+        {"joint": derived, "same": derived, "moved": shifted(derived, 3.0)}, None, known
+    )
+    assert_allclose(
+        again[again["analysis"] == "moved"]["shift_sigma"], 2.0 * moved["shift_sigma"], rtol=1e-9
+    )
+    assert np.isnan(again[again["analysis"] == "same"]["shift_sigma"]).all()
 
 
 def test_comparison_holds_the_evidences(study: FigureInputs) -> None:
@@ -820,7 +840,7 @@ def test_comparison_figure_shows_every_analysis(study: FigureInputs, tmp_path: P
         rows = table[np.asarray(table["analysis"]) == name]
         assert_allclose(drawn[name], rows["shift_sigma"])
     assert r"[$\sigma$]" in axes.get_xlabel()
-    assert "The analyses share data" in texts(figure)
+    assert "error of the difference" in texts(figure).replace("\n", " ")
 
 
 def test_comparison_of_one_analysis_is_refused(study: FigureInputs) -> None:

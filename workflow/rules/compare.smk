@@ -4,6 +4,8 @@ rule compare_analyses:
             "results/{analysis}/tables/{table}.ecsv", analysis=ANALYSES, table=TABLES
         ),
         convergence=expand("results/{analysis}/convergence.json", analysis=ANALYSES),
+        responses=expand("results/{analysis}/response.h5", analysis=ANALYSES),
+        posteriors=expand("results/{analysis}/posterior.nc", analysis=ANALYSES),
     output:
         table="results/comparison/tables/shifts.ecsv",
         pdf="results/comparison/figures/shifts.pdf",
@@ -20,6 +22,6 @@ rule compare_analyses:
         runtime=10,
     params:
         analyses=ANALYSES,
-        code=code_hash("fogline.comparison", "fogline.figures"),
+        code=code_hash("fogline.drawing"),
     script:
         "../scripts/compare_analyses.py"

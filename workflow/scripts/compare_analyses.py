@@ -9,6 +9,8 @@ with job(snakemake.log[0]):
         snakemake.params.analyses,
         snakemake.input.tables,
         snakemake.input.convergence,
+        snakemake.input.responses,
+        snakemake.input.posteriors,
         table=snakemake.output.table,
         figure=snakemake.output.pdf,
     )

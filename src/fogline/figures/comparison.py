@@ -66,7 +66,10 @@ def draw_comparison(table: Table) -> Figure:
     figure.legend(loc="outside upper center", ncols=2)
     add_note(
         figure,
-        [f"Shifts from {reference}. The analyses share data: not a significance."],
+        [
+            f"Shifts from {reference}, over the error of the difference: what both share of data "
+            "and prior has dropped out. Missing marks: that error is too small to tell."
+        ],
     )
     return figure
 

@@ -112,6 +112,51 @@ def gradient_of(function: Callable[[Array], Array], x: Array) -> Array:
     return np.where(np.isfinite(difference), difference, 0.0).T
 
 
+@dataclass(frozen=True)
+class RowPulls:
+    """Pulls of every row as functions of the parameters, for data that lie where the model does.
+
+    Parameters
+    ----------
+    posterior : Posterior
+    data : ndarray, shape (n_rows,)
+        Predictions at one point in the data's own space, and the measurements behind limits.
+    weight : ndarray, shape (n_rows,)
+        Information per squared gradient of a pull.
+    """
+
+    posterior: Posterior
+    data: Array
+    weight: Array
+
+    @classmethod
+    def at(cls, posterior: Posterior, theta: Array) -> RowPulls:
+        """Return the pulls about one parameter vector, shape (n_parameters,)."""
+        response, likelihood = posterior.response, posterior.likelihood
+        predicted, nuisances = response.predict(theta[None]), theta[None, response.n_parameters :]
+        middle = likelihood.in_data_space(likelihood.scaled(predicted, nuisances))[0]
+        limited = likelihood.limit != 0
+        gap = np.zeros(len(middle))
+        if limited.any():
+            pulls = likelihood.standardize(likelihood.observed, predicted, nuisances)[0]
+            gap[limited] = (likelihood.limit * pulls)[limited]
+        data = np.where(limited, likelihood.observed, middle)
+        return cls(posterior, data, _weights(response.datasets, likelihood.rows.student_dof, gap))
+
+    def pulls(self, theta: Array) -> Array:
+        """Return pulls, and ln of the intensity of cells of lists, shape (n, n_rows).
+
+        Their gradient is minus that of the prediction over its error; of cells it is that of ln λ.
+        """
+        response, likelihood = self.posterior.response, self.posterior.likelihood
+        predicted, nuisances = response.predict(theta), theta[:, response.n_parameters :]
+        with np.errstate(invalid="ignore", divide="ignore"):
+            pulls = likelihood.standardize(self.data, predicted, nuisances)
+            cells = likelihood.rows.role == INTENSITY
+            pulls[:, cells] = np.log(likelihood.scaled(predicted, nuisances)[:, cells])
+        return pulls
+
+
 def information_at(posterior: Posterior, x: Array) -> Information:
     """Return the information of every data set.
 
@@ -121,37 +166,16 @@ def information_at(posterior: Posterior, x: Array) -> Information:
     x : ndarray, shape (n_dim,)
         Such as the posterior mean, in unit-normal coordinates.
     """
-    response, likelihood = posterior.response, posterior.likelihood
-    datasets = response.datasets
-    theta = posterior.prior.to_parameters(x[None])
-    at_x = response.predict(theta)
-    # Data where the model is: pulls there are zero, and their gradient is minus that of m / σ.
-    middle = likelihood.in_data_space(likelihood.scaled(at_x, theta[:, response.n_parameters :]))
-    limited = likelihood.limit != 0
-    gap = np.zeros(middle.shape[1])
-    if limited.any():
-        pulls = likelihood.standardize(
-            likelihood.observed, at_x, theta[:, response.n_parameters :]
-        )[0]
-        gap[limited] = (likelihood.limit * pulls)[limited]
-    kept = np.where(limited, likelihood.observed, middle[0])
-
-    def standardized(points: Array) -> Array:
-        parameters = posterior.prior.to_parameters(points)
-        predicted = response.predict(parameters)
-        nuisances = parameters[:, response.n_parameters :]
-        pulls = likelihood.standardize(kept, predicted, nuisances)
-        cells = likelihood.rows.role == INTENSITY
-        with np.errstate(divide="ignore"):
-            pulls[:, cells] = np.log(likelihood.scaled(predicted, nuisances)[:, cells])
-        return pulls
-
-    gradient = gradient_of(standardized, x)
-    weight = _weights(datasets, likelihood.rows.student_dof, gap)
+    to_parameters = posterior.prior.to_parameters
+    rows = RowPulls.at(posterior, to_parameters(x[None])[0])
+    gradient = gradient_of(lambda points: rows.pulls(to_parameters(points)), x)
     return Information(
-        tuple(data.name for data in datasets),
+        tuple(data.name for data in posterior.response.datasets),
         np.array(
-            [(gradient[rows] * weight[rows, None]).T @ gradient[rows] for rows in response.slices]
+            [
+                (gradient[part] * rows.weight[part, None]).T @ gradient[part]
+                for part in posterior.response.slices
+            ]
         ),
     )
 
