@@ -81,11 +81,11 @@ def compare(
         No rows for one analysis.
     """
     reference, *others = results
-    wanted = {(value.quantity, value.z): value for value in _values(results[reference])}
+    wanted = {(value.quantity, value.z): value for value in headline_values(results[reference])}
     rows = [
         _row(analysis, reference, value, wanted[value.quantity, value.z], differences)
         for analysis in others
-        for value in _values(results[analysis])
+        for value in headline_values(results[analysis])
         if (value.quantity, value.z) in wanted
     ]
     if evidences:
@@ -128,12 +128,23 @@ def _nearest_difference(known: Mapping[tuple[str, float], float], value: Value) 
     return error if distance < SAME_REDSHIFT else float("nan")
 
 
-def _values(tables: Mapping[str, Table]) -> Iterator[Value]:
+def headline_values(tables: Mapping[str, Table]) -> Iterator[Value]:
+    """Give the headline quantities that derived tables hold.
+
+    Parameters
+    ----------
+    tables : mapping of str to astropy.table.Table
+        By name; quantities of a table that is missing are left out.
+    """
     for headline in HEADLINES:
+        if headline.table not in tables:
+            continue
         table = tables[headline.table]
         prefix = f"{headline.curve}_" if headline.curve else ""
         for z in REDSHIFTS:
             yield _value(table[_nearest(table["z"], z)], headline.quantity, prefix)
+    if "column_distribution" not in tables:
+        return
     table = tables["column_distribution"]
     reference = table[np.asarray(table["z"]) == table["z"][0]]
     for log_nhi in COLUMNS:

@@ -26,7 +26,7 @@ from fogline.config_schema import (
 )
 from fogline.config_settings import analysis_settings
 from fogline.faults import Fault, InputError, nearest
-from fogline.settings import AnalysisSettings, Study
+from fogline.settings import DEFAULT_OVERLAYS, AnalysisSettings, Study
 from fogline.yaml_lines import Place, read_yaml
 
 _NAME: Final = re.compile(r"[A-Za-z0-9_-]+")
@@ -88,6 +88,7 @@ def parse_config(
     config = dict(config)
     faults.extend(schema_faults(config))
     faults.extend(_missing_at_top(config))
+    faults.extend(_previous_faults(config))
     blocks = config.get("analyses")
     blocks = blocks if isinstance(blocks, Mapping) else {}
     chains = {name: _chain(name, blocks, faults) for name in blocks}
@@ -96,7 +97,12 @@ def parse_config(
     }
     if faults.found:
         raise InputError(faults.found)
-    return Study({name: made for name, made in analyses.items() if made is not None}, config)
+    return Study(
+        {name: made for name, made in analyses.items() if made is not None},
+        tuple(config.get("overlays") or DEFAULT_OVERLAYS),
+        config.get("compare_with"),
+        config,
+    )
 
 
 def check_distributions(
@@ -166,6 +172,18 @@ class _Faults:
     def extend(self, placed: Any) -> None:
         for place, what in placed:
             self.add(place, what)
+
+
+def _previous_faults(config: Mapping[str, Any]) -> Iterator[PlacedFault]:
+    """Give what is wrong with the previous results folder."""
+    folder, analyses = config.get("compare_with"), config.get("analyses")
+    if not isinstance(folder, str) or not isinstance(analyses, Mapping):
+        return
+    if not os.path.isdir(folder):
+        yield ("compare_with",), f"compare_with is '{folder}', but there is no such folder"
+    elif not any(os.path.isdir(os.path.join(folder, str(a), "tables")) for a in analyses):
+        what = f"compare_with is '{folder}', which has results of none of the analyses"
+        yield ("compare_with",), f"{what} {', '.join(map(str, analyses))} (NAME/tables/)"
 
 
 def _missing_at_top(config: Mapping[str, Any]) -> list[tuple[Place, str]]:

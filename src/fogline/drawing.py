@@ -11,10 +11,14 @@ from astropy.table import Table
 from numpy.typing import NDArray
 
 from fogline.chains import EnsembleResult
+from fogline.changes import changes, read_previous
 from fogline.combining import replicate_rng
 from fogline.comparison import EVIDENCE, compare
 from fogline.deriving import make_draws
+from fogline.faults import Fault, InputError
 from fogline.figures import FIGURES, FigureInputs, draw_comparison, save
+from fogline.figures.comparison import draw_changes
+from fogline.figures.overlays import draw_overlays
 from fogline.headlines import headline_draws
 from fogline.posterior_file import read_coordinates, read_draws
 from fogline.response_file import Fit, load_fit
@@ -73,8 +77,9 @@ def write_comparison(
     responses: Sequence[str],
     posteriors: Sequence[str],
     *,
+    overlays: Sequence[str],
     table: str | Path,
-    figure: str | Path,
+    figures: str | Path,
 ) -> None:
     """Compare the derived quantities of analyses with those of the first.
 
@@ -89,12 +94,14 @@ def write_comparison(
     responses, posteriors : sequence of str
         Files ``<analysis>/response.h5`` and ``<analysis>/posterior.nc``, in the order of the
         analyses.
-    table, figure : path-like
-        Table and figure to write; the figure's suffix is replaced by each form's.
+    overlays : sequence of str
+        Quantities of the overlays, ``table/curve``.
+    table : path-like
+        Table to write.
+    figures : path-like
+        Folder of the figures ``shifts`` and ``overlays``.
     """
-    by_analysis: dict[str, dict[str, Table]] = {name: {} for name in analyses}
-    for path in map(Path, tables):
-        by_analysis[path.parent.parent.name][path.stem] = read_table(path)
+    by_analysis = _by_analysis(analyses, tables)
     reports = {
         Path(path).parent.name: json.loads(Path(path).read_text(encoding="utf-8"))["evidence"]
         for path in convergence
@@ -109,7 +116,51 @@ def write_comparison(
     }
     shifts = compare(by_analysis, evidences, differences)
     write_table(shifts, table)
-    save(draw_comparison(shifts[shifts["quantity"] != EVIDENCE]), Path(figure).with_suffix(""))
+    save(draw_comparison(shifts[shifts["quantity"] != EVIDENCE]), Path(figures) / "shifts")
+    save(draw_overlays(by_analysis, overlays), Path(figures) / "overlays")
+
+
+def write_changes(
+    analyses: Sequence[str],
+    tables: Sequence[str],
+    previous: str | Path,
+    *,
+    table: str | Path,
+    figure: str | Path,
+) -> None:
+    """Compare the derived quantities of analyses with those of a previous results folder.
+
+    Parameters
+    ----------
+    analyses : sequence of str
+    tables : sequence of str
+        Files ``<analysis>/tables/<name>.ecsv`` of all analyses.
+    previous : path-like
+        Folder that holds the same.
+    table, figure : path-like
+        ECSV file; figure without suffix.
+
+    Raises
+    ------
+    InputError
+        Where the folder has no derived tables of any of the analyses.
+    """
+    now = _by_analysis(analyses, tables)
+    names = tuple(dict.fromkeys(Path(path).stem for path in tables))
+    before = {name: read_previous(previous, name, names) for name in analyses}
+    found = changes(before, now)
+    if not len(found):
+        what = f"compare_with is '{previous}', which has no derived tables of these analyses"
+        raise InputError([Fault("config", 1, what)])
+    write_table(found, table)
+    save(draw_changes(found), figure)
+
+
+def _by_analysis(analyses: Sequence[str], tables: Sequence[str]) -> dict[str, dict[str, Table]]:
+    found: dict[str, dict[str, Table]] = {name: {} for name in analyses}
+    for path in map(Path, tables):
+        found[path.parent.parent.name][path.stem] = read_table(path)
+    return found
 
 
 def _influence(response: str, posterior: str) -> Influence:

@@ -13,6 +13,17 @@ from typing import Any
 BACKGROUNDS = ("photoionization_rate", "mean_intensity", "emissivity")
 """Kinds of tables from which sources or their background follow."""
 
+DEFAULT_OVERLAYS = (
+    "column_distribution",
+    "lya_opacity",
+    "incidence/lx_lls_tau2",
+    "incidence/lx_dla",
+    "mean_free_path/local",
+    "mean_free_path/unit_depth",
+    "hi_density/rho_hi",
+)
+"""Quantities of which the bands of all analyses are drawn over one another."""
+
 Distribution = Mapping[str, Any]
 """A scipy distribution by name and arguments, e.g. ``{dist: norm, loc: 1.5, scale: 1.5}``."""
 
@@ -181,6 +192,8 @@ class Study:
     """Every analysis of one config, in the order of the file."""
 
     analyses: Mapping[str, AnalysisSettings]
+    overlays: tuple[str, ...] = DEFAULT_OVERLAYS  # table/curve
+    compare_with: str | None = None  # a previous results folder
     raw: Mapping[str, Any] = field(repr=False, default_factory=dict)
 
 

@@ -23,17 +23,21 @@ from scipy.optimize import least_squares
 
 from fogline import plan
 from fogline.chains import EnsembleResult
+from fogline.changes import changes
 from fogline.comparison import compare
 from fogline.constraint_files import read_constraint_files
 from fogline.convergence import assess
 from fogline.datasets import DataSet
 from fogline.derived import DERIVED_TABLES, Draws
 from fogline.evidence import Importance
+from fogline.faults import InputError
 from fogline.figures import FIGURES, FigureInputs, dataset_styles, draw_comparison, save
 from fogline.figures.axis import unmeasured_columns
 from fogline.figures.column_distribution import to_log_f
+from fogline.figures.comparison import draw_changes
 from fogline.figures.data_points import along_columns, along_z, poisson_interval
 from fogline.figures.lya_opacity import to_tau
+from fogline.figures.overlays import draw_overlays
 from fogline.inputs import with_nuisances
 from fogline.mixture import StudentMixture
 from fogline.response_file import Fit, build_fit
@@ -848,3 +852,49 @@ def test_comparison_of_one_analysis_is_refused(study: FigureInputs) -> None:
     assert len(table) == 0
     with pytest.raises(ValueError, match="nothing to compare"):
         draw_comparison(table)
+
+
+def test_overlays_draw_every_analysis_and_name_what_is_not_there(study: FigureInputs) -> None:
+    derived = {name: study.tables[name] for name in DERIVED_TABLES}
+    results = {"joint": derived, "moved": shifted(derived, 1.0)}
+    figure = draw_overlays(results, ["column_distribution", "incidence/lx_dla", "lya_opacity"])
+    assert len(figure.axes) == 3
+    first, second = figure.axes[0].lines[:2]
+    assert_allclose(first.get_ydata(), 0.0)
+    assert (np.asarray(second.get_ydata()) > 0.0).all()  # the second less the first
+    assert figure.axes[1].get_ylabel() == r"$\ell(X)$, DLAs"
+    for overlay, words in (
+        ("incidense/lx_dla", "names no derived table; did you mean 'incidence'"),
+        ("incidence/lx_dlas", "names no curve of incidence; did you mean 'lx_dla'"),
+    ):
+        with pytest.raises(InputError, match="overlays") as caught:
+            draw_overlays(results, [overlay])
+        assert words in str(caught.value)
+
+
+def test_changes_say_what_moved_and_what_was_altered(study: FigureInputs) -> None:
+    def tables(sigmas: float, **meta: Any) -> dict[str, Table]:
+        made = shifted({name: study.tables[name] for name in DERIVED_TABLES}, sigmas)
+        for table in made.values():
+            table.meta.update(meta)
+        return made
+
+    config = {"model": {"pivots": [12.0, 22.5]}, "derive": {"draws": 10}}
+    before = tables(0.0, inputs={"a.ecsv": "1", "b.ecsv": "2"}, config=json.dumps(config))
+    config["model"]["pivots"] = [12.0, 22.0]
+    now = tables(2.0, inputs={"a.ecsv": "9", "c.ecsv": "3"}, config=json.dumps(config))
+    table = changes({"joint": before}, {"joint": now, "new": now})
+    assert set(table["analysis"]) == {"joint"}
+    finite = np.asarray(table["change_sigma"], float)
+    assert_allclose(finite[np.isfinite(finite)], 2.0, rtol=1e-6)  # now minus before
+    assert table.meta["changed"] == [
+        "joint: added c.ecsv",
+        "joint: removed b.ecsv",
+        "joint: altered a.ecsv",
+        "joint: model.pivots: [12.0, 22.5] became [12.0, 22.0]",
+    ]
+    assert "1 more" not in texts(draw_changes(table))
+    same = changes({"joint": now}, {"joint": now})
+    assert_allclose(same["change_sigma"], 0.0)
+    assert same.meta["changed"] == ["nothing: the same inputs and settings"]
+    assert len(changes({}, {"joint": now})) == 0

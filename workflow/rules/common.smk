@@ -38,6 +38,8 @@ FORECASTS = [
     if settings.forecasts
 ]
 COMPARISON = ["results/comparison/figures/shifts.pdf"] if len(ANALYSES) > 1 else []
+if STUDY.compare_with:
+    COMPARISON.append("results/comparison/figures/changes.pdf")
 
 
 wildcard_constraints:
@@ -48,6 +50,17 @@ wildcard_constraints:
     mode="prior|posterior",
     batch=r"\d+",
     run=r"\d+",
+
+
+def previous_tables():
+    """The derived tables of the results folder that the study is compared with."""
+    folder = STUDY.compare_with
+    paths = [
+        os.path.join(folder, analysis, "tables", f"{table}.ecsv")
+        for analysis in (ANALYSES if folder else [])
+        for table in DERIVED
+    ]
+    return [path for path in paths if os.path.isfile(path)]
 
 
 def analysis_of(wildcards):

@@ -1,5 +1,7 @@
 """Compare the derived quantities of all analyses."""
 
+from pathlib import Path
+
 from fogline.jobs import job
 
 with job(snakemake.log[0]):
@@ -11,6 +13,7 @@ with job(snakemake.log[0]):
         snakemake.input.convergence,
         snakemake.input.responses,
         snakemake.input.posteriors,
+        overlays=snakemake.params.overlays,
         table=snakemake.output.table,
-        figure=snakemake.output.pdf,
+        figures=Path(snakemake.output.pdf[0]).parent,
     )
