@@ -28,6 +28,7 @@ include: "workflow/rules/forecast.smk"
 include: "workflow/rules/tension.smk"
 include: "workflow/rules/calibration.smk"
 include: "workflow/rules/agreement.smk"
+include: "workflow/rules/families.smk"
 
 
 rule all:

@@ -11,6 +11,7 @@ from __future__ import annotations
 import os
 import re
 from collections.abc import Callable, Iterator, Mapping
+from dataclasses import replace
 from typing import Any, Final
 
 from fogline.config_checks import block_faults, distribution_faults
@@ -31,8 +32,11 @@ from fogline.yaml_lines import Place, read_yaml
 
 _NAME: Final = re.compile(r"[A-Za-z0-9_-]+")
 
-RESERVED: Final = "comparison"
-"""Name that no analysis may have: its folder holds the comparison of all."""
+RESERVED: Final = {
+    "comparison": "the folder of the comparison of analyses",
+    "families": "the folder of families of analyses",
+}
+"""Names that no analysis may have: their folders hold something else."""
 
 LineOf = Callable[[Place], int]
 
@@ -95,12 +99,17 @@ def parse_config(
     analyses = {
         name: _analysis(name, chain, config, faults) for name, chain in chains.items() if chain
     }
+    families = config.get("families")
+    families = families if isinstance(families, Mapping) else {}
+    for place, what in _family_faults(families, analyses) if not faults.found else ():
+        faults.add(place, what)
     if faults.found:
         raise InputError(faults.found)
     return Study(
         {name: made for name, made in analyses.items() if made is not None},
         tuple(config.get("overlays") or DEFAULT_OVERLAYS),
         config.get("compare_with"),
+        {name: tuple(members) for name, members in families.items()},
         config,
     )
 
@@ -174,6 +183,30 @@ class _Faults:
             self.add(place, what)
 
 
+def _family_faults(
+    families: Mapping[str, Any], analyses: Mapping[str, AnalysisSettings | None]
+) -> Iterator[PlacedFault]:
+    """Give what is wrong with families of analyses: only models of the same data compare."""
+    for family, members in families.items():
+        place: Place = ("families", family)
+        if not _NAME.fullmatch(str(family)):
+            yield place, f"family is named '{family}', must be letters, digits, '_' and '-'"
+        for i, member in enumerate(members):
+            if member not in analyses:
+                what = f"families.{family}: '{member}' is no analysis; {nearest(member, analyses)}"
+                yield (*place, i), what
+        known = [analyses[m] for m in members if analyses.get(m) is not None]
+        if len(set(members)) < max(2, len(members)):
+            yield place, f"families.{family} must be two different analyses or more"
+        first = known[0] if known else None
+        for other in known[1:]:
+            assert first is not None
+            assert other is not None
+            if (other.datasets, other.nuisances) != (first.datasets, first.nuisances):
+                what = f"families.{family}: '{other.name}' has not the data sets of '{first.name}'"
+                yield place, f"{what}; only models of the same data can be weighed"
+
+
 def _previous_faults(config: Mapping[str, Any]) -> Iterator[PlacedFault]:
     """Give what is wrong with the previous results folder."""
     folder, analyses = config.get("compare_with"), config.get("analyses")
@@ -199,8 +232,8 @@ def _chain(name: str, blocks: Mapping[str, Any], faults: _Faults) -> tuple[str, 
         what = f"analysis is named '{name}', must be letters, digits, '_' and '-'"
         faults.add(("analyses", name), f"{what} (it names outputs)")
         return ()
-    if name == RESERVED:
-        what = f"analysis is named '{name}', which is the folder of the comparison of analyses"
+    if name in RESERVED:
+        what = f"analysis is named '{name}', which is {RESERVED[name]}"
         faults.add(("analyses", name), f"{what}; choose another name")
         return ()
     chain = [name]
@@ -244,7 +277,10 @@ def _analysis(
         missing.extend(_unknown_datasets(blocks, files))
     for place, what in missing:
         faults.add(layers.origin(place) if place else (), what)
-    return None if missing else analysis_settings(name, files, blocks)
+    if missing:
+        return None
+    on_request = config["analyses"][name].get("on_request") is True
+    return replace(analysis_settings(name, files, blocks), on_request=on_request)
 
 
 def _unknown_datasets(blocks: Mapping[str, Any], files: tuple[str, ...]) -> Iterator[PlacedFault]:

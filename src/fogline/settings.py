@@ -184,6 +184,7 @@ class AnalysisSettings:
     # By data set: scale, scatter, student_dof, as the file's meta may state them too.
     nuisances: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
     checks: ChecksSettings = field(default_factory=ChecksSettings)
+    on_request: bool = False  # no part of the default run
     forecasts: tuple[CandidateSettings, ...] = ()
 
 
@@ -194,6 +195,7 @@ class Study:
     analyses: Mapping[str, AnalysisSettings]
     overlays: tuple[str, ...] = DEFAULT_OVERLAYS  # table/curve
     compare_with: str | None = None  # a previous results folder
+    families: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
     raw: Mapping[str, Any] = field(repr=False, default_factory=dict)
 
 
@@ -220,6 +222,7 @@ def analysis_from_plain(plain: Mapping[str, Any]) -> AnalysisSettings:
         derive=DeriveSettings(**{k: _tupled(v) for k, v in plain["derive"].items()}),
         nuisances=plain.get("nuisances", {}),
         checks=_checks(plain.get("checks", {})),
+        on_request=bool(plain.get("on_request", False)),
         forecasts=tuple(
             CandidateSettings(**{k: _tupled(v) for k, v in candidate.items()})
             for candidate in plain.get("forecasts", ())

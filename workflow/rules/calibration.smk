@@ -62,7 +62,7 @@ rule calibration:
     input:
         [
             f"results/{analysis}/figures/calibration_{mode}.pdf"
-            for analysis, settings in STUDY.analyses.items()
-            for mode in settings.checks.calibration.modes
+            for analysis in ANALYSES
+            for mode in STUDY.analyses[analysis].checks.calibration.modes
         ],
     localrule: True

@@ -30,12 +30,12 @@ except InputError as error:
     print(error, file=sys.stderr)
     sys.exit(2)
 
-ANALYSES = list(STUDY.analyses)
+ANALYSES = [name for name, made in STUDY.analyses.items() if not made.on_request]
 TABLES = ["parameters", *DERIVED, *CHECKS]
 FORECASTS = [
     f"results/{analysis}/figures/forecast.pdf"
-    for analysis, settings in STUDY.analyses.items()
-    if settings.forecasts
+    for analysis in ANALYSES
+    if STUDY.analyses[analysis].forecasts
 ]
 COMPARISON = ["results/comparison/figures/shifts.pdf"] if len(ANALYSES) > 1 else []
 if STUDY.compare_with:
@@ -50,6 +50,7 @@ wildcard_constraints:
     mode="prior|posterior",
     batch=r"\d+",
     run=r"\d+",
+    family=r"[A-Za-z0-9_-]+",
 
 
 def previous_tables():
