@@ -112,10 +112,11 @@ def combine(values: list[Array], weight: Array) -> Combined:
     at = np.minimum(np.searchsorted(below, np.array(QUANTILES) * below[-1]), len(pooled) - 1)
     bands = pooled[order][at]
     kept = weight > 0.0
-    mean = np.array([v.mean() for v in values])[kept]
-    variance = np.array([v.var() for v in values])[kept]
+    used = [v for v, keep in zip(values, kept, strict=True) if keep]
     w = weight[kept] / weight[kept].sum()
     with np.errstate(invalid="ignore"):
+        mean = np.array([v.mean() for v in used])
+        variance = np.array([v.var() for v in used])
         between = float(w @ (mean - w @ mean) ** 2)
         whole = float(w @ variance) + between
     usable = np.isfinite(whole) and whole > 0.0
