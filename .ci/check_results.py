@@ -4,7 +4,7 @@ import json
 import sys
 from pathlib import Path
 
-from fogline.plan import DERIVED, EXPORTS, FIGURES
+from fogline.plan import CHECKS, DERIVED, EXPORTS, FIGURES
 
 faults = []
 analyses = sorted(p.parent for p in Path("results").glob("*/convergence.json"))
@@ -14,7 +14,7 @@ for folder in analyses:
     expected = [
         folder / "figures" / f"{name}.{form}" for name in FIGURES for form in ("pdf", "png")
     ]
-    tables = ("parameters", *DERIVED, "predictive")
+    tables = ("parameters", *DERIVED, *CHECKS)
     expected += [folder / "tables" / f"{name}.ecsv" for name in tables]
     expected += [folder / "exports" / name for name in EXPORTS]
     expected += [folder / name for name in ("posterior.nc", "summary.html", "summary.md")]

@@ -11,6 +11,9 @@ from pathlib import Path
 
 import pytest
 
+PATIENCE = 1200
+"""Seconds that a run may take: far more than it needs on a busy machine."""
+
 PROJECT = Path(__file__).parents[2]
 DATASETS = ("lya_opacity", "forest_columns", "lls_incidence", "mean_free_path", "dla_columns")
 
@@ -61,7 +64,7 @@ class StudyFolder:
             stdout=subprocess.PIPE,
             stderr=subprocess.STDOUT,
             text=True,
-            timeout=300,
+            timeout=PATIENCE,
             check=False,
         )
 

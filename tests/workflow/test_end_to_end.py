@@ -9,7 +9,7 @@ from arviz_stats.base import array_stats
 from astropy.table import Table
 from conftest import DATASETS, StudyFolder
 
-from fogline.plan import DERIVED, FIGURES
+from fogline.plan import CHECKS, DERIVED, FIGURES
 from fogline.rounding import rounded
 
 ANALYSES = ("all_data", "without_free_path")
@@ -19,7 +19,7 @@ BANDS = ("median", "lo68", "hi68", "lo95", "hi95")
 @pytest.mark.parametrize("analysis", ANALYSES)
 def test_every_file_of_the_contract_is_there(finished: StudyFolder, analysis: str) -> None:
     folder = finished.path / "results" / analysis
-    tables = [f"tables/{name}.ecsv" for name in ("parameters", *DERIVED, "predictive")]
+    tables = [f"tables/{name}.ecsv" for name in ("parameters", *DERIVED, *CHECKS)]
     figures = [f"figures/{name}.{form}" for name in FIGURES for form in ("pdf", "png")]
     pages = ("summary.html", "summary.md")
     for name in ("posterior.nc", "convergence.json", *pages, *tables, *figures):
