@@ -202,9 +202,10 @@ def _family_faults(
         for other in known[1:]:
             assert first is not None
             assert other is not None
-            if (other.datasets, other.nuisances) != (first.datasets, first.nuisances):
-                what = f"families.{family}: '{other.name}' has not the data sets of '{first.name}'"
-                yield place, f"{what}; only models of the same data can be weighed"
+            for key in ("datasets", "nuisances", "cosmology", "derive"):
+                if getattr(other, key) != getattr(first, key):
+                    what = f"families.{family}: '{other.name}' has not the {key} of '{first.name}'"
+                    yield place, f"{what}; only models of the same data can be weighed"
 
 
 def _previous_faults(config: Mapping[str, Any]) -> Iterator[PlacedFault]:

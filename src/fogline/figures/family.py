@@ -37,13 +37,13 @@ def draw_family(combined: Table, weights: Table) -> Figure:
     _draw_along(axes, combined[along], names, weights)
     _draw_headlines(lower, headlines, names)
     figure.legend(*axes.get_legend_handles_labels(), loc="outside upper left", ncols=1)
-    share = np.asarray(headlines["stacked_choice_share"], float)
+    share = np.asarray(headlines["equal_choice_share"], float)
     share = share[np.isfinite(share)]
     notes = ["Bands: 68%, less the median of the stacked mixture; below in units of its error."]
     if len(share):
         notes.append(
-            f"Of the mixture's squared errors {100 * np.median(share):.0f}% (median) to "
-            f"{100 * share.max():.0f}% (largest) is choice of pivots and priors."
+            f"With equal weights {100 * np.median(share):.0f}% (median) to "
+            f"{100 * share.max():.0f}% (largest) of squared errors is choice of pivots and priors."
         )
     add_note(figure, notes)
     return figure

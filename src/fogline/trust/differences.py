@@ -91,8 +91,9 @@ def influence_of(fit: Fit, x: Array, theta: Array, headlines: HeadlineDraws) -> 
     noise = np.zeros(values.shape[1])
     spread = pulls.pulls(theta).var(axis=0)
     for data, part in zip(fit.response.datasets, fit.response.slices, strict=True):
-        content = str(fit.provenance["inputs"].get(data.path, data.path))
-        identity = (data.name, content, to_json(dict(data.meta)))
+        inputs = fit.provenance["inputs"]
+        content = [inputs.get(path, path) for path in (data.path, *data.linked)]
+        identity = (data.name, to_json(content), to_json(dict(data.meta)))
         for row, at in enumerate(range(part.start, part.stop)):
             if pulls.weight[at] != 0.0:
                 key: Key = (*identity, str(row))

@@ -28,7 +28,7 @@ Array = NDArray[np.float64]
 DRAWS: Final = 4000
 COLUMN_STEP: Final = 0.1
 SEED: Final = 1_000_171
-MIXTURES: Final = ("stacked", "evidence")
+MIXTURES: Final = ("stacked", "evidence", "equal")
 BANDS: Final = ("median", "lo68", "hi68", "lo95", "hi95")
 
 
@@ -177,15 +177,17 @@ def combined_table(
         for name, q in zip(BANDS, (0.5, 0.16, 0.84, 0.025, 0.975), strict=True):
             values = np.quantile(member.values, q, axis=0, method="inverted_cdf")
             table[f"{member.name}_{name}"] = values
-    for mixture, weight in zip(
-        MIXTURES, (stacked, np.asarray(weights["weight_evidence"])), strict=True
-    ):
+    equal = np.full(len(members), 1.0 / len(members))
+    by_evidence = np.asarray(weights["weight_evidence"])
+    for mixture, weight in zip(MIXTURES, (stacked, by_evidence, equal), strict=True):
         found = [combine([m.values[:, i] for m in members], weight) for i in range(len(keys))]
         for number, name in enumerate(BANDS):
             table[f"{mixture}_{name}"] = [c.bands[number] for c in found]
         table[f"{mixture}_choice_share"] = [c.choice_share for c in found]
     table.meta["definition"] = (
-        "Bands of every member, and of the mixtures by stacking weights and by evidence. "
+        "Bands of every member, and of the mixtures by stacking weights, by evidence, and with "
+        "equal weights. Few rows tell models apart: where the first two lean on one member, the "
+        "last says what the others would have changed. "
         "choice_share: part of the mixture's variance that lies between members: how much of the "
         "error bar is choice of pivots and priors. log_f(N): log10 f along columns. Units are "
         "those of the derived tables."
