@@ -35,15 +35,6 @@ rule sample_nested:
         "../scripts/sample_nested.py"
 
 
-def other_samplers(wildcards):
-    """The files of the samplers that an analysis is compared with."""
-    runs = 2 if analysis_of(wildcards).checks.nested else 0
-    return [
-        "results/{analysis}/agreement/tempered.h5",
-        *(f"results/{{analysis}}/agreement/nested_{run}.h5" for run in range(runs)),
-    ]
-
-
 rule compare_samplers:
     input:
         response="results/{analysis}/response.h5",

@@ -1,15 +1,6 @@
 """Calibration by simulation, in batches that are independent jobs; made on request."""
 
 
-def calibration_batches(wildcards):
-    """The files of all batches of an analysis and mode."""
-    settings = analysis_of(wildcards).checks.calibration
-    count = -(-settings.replicates // settings.batch)
-    return expand(
-        "results/{{analysis}}/calibration/{{mode}}/{batch}.json", batch=range(count)
-    )
-
-
 rule calibrate:
     input:
         response="results/{analysis}/response.h5",

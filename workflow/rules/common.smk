@@ -73,3 +73,26 @@ def ensembles_of(wildcards):
     """The files of all ensembles of a job's analysis."""
     count = analysis_of(wildcards).sampler.ensembles
     return expand("results/{{analysis}}/ensembles/{i}.h5", i=range(count))
+
+
+def calibration_batches(wildcards):
+    """The files of all batches of an analysis and mode."""
+    settings = analysis_of(wildcards).checks.calibration
+    count = -(-settings.replicates // settings.batch)
+    return expand(
+        "results/{{analysis}}/calibration/{{mode}}/{batch}.json", batch=range(count)
+    )
+
+
+def other_samplers(wildcards):
+    """The files of the samplers that an analysis is compared with."""
+    runs = 2 if analysis_of(wildcards).checks.nested else 0
+    return [
+        "results/{analysis}/agreement/tempered.h5",
+        *(f"results/{{analysis}}/agreement/nested_{run}.h5" for run in range(runs)),
+    ]
+
+
+def of_members(pattern):
+    """A function that gives one file for every member of a job's family."""
+    return lambda wildcards: expand(pattern, member=STUDY.families[wildcards.family])

@@ -1,11 +1,6 @@
 """Families of models of the same data, weighed and combined; made on request."""
 
 
-def of_members(pattern):
-    """A function that gives one file for every member of a job's family."""
-    return lambda wildcards: expand(pattern, member=STUDY.families[wildcards.family])
-
-
 rule combine_family:
     input:
         responses=of_members("results/{member}/response.h5"),
