@@ -222,7 +222,7 @@ def _consistent(evidence: Evidence) -> Line:
     n_flags = len(rows) + len(tests)
     names = sorted({str(row["dataset"]) for row in (*rows, *tests)})
     text = (
-        f"{n_flags} of {counted} flagged, in {_list(names)}"
+        f"{n_flags} {'flag' if n_flags == 1 else 'flags'} among {counted}, in {_list(names)}"
         if n_flags
         else f"No flag among {counted}"
     )

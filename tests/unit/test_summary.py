@@ -95,7 +95,7 @@ def test_flagged_row_and_test(summary_of) -> None:
     summary = summary_of(row_flags=("", "outside", ""), test_flags=("misfit", ""))
     line = summary.verdict[1]
     assert (line.answer, line.state) == ("No", BAD)
-    assert "2 of 3 rows and 2 tests flagged, in `counts`;" in line.text
+    assert "2 flags among 3 rows and 2 tests, in `counts`;" in line.text
     assert summary.datasets[0].flags == ("row 1 outside", "trend (4.2σ)")
     assert summary.datasets[1].flags == ()
     assert summary.steps[0].text.startswith("`figures/misfit`")
