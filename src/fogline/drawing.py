@@ -28,7 +28,7 @@ from fogline.trust.differences import Influence, difference_sigma, influence_of
 Array = NDArray[np.float64]
 
 PRIOR_DRAWS = 4000
-DIFFERENCE_DRAWS = 8000
+DIFFERENCE_DRAWS = 6000
 
 
 def draw_figures(

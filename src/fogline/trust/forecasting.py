@@ -16,7 +16,7 @@ from fogline.tables import write_table
 from fogline.trust.candidates import forecast_candidates, read_candidates
 from fogline.trust.forecast import forecast_table
 
-DRAWS = 8000
+DRAWS = 4000
 """Posterior draws that are weighted."""
 
 STREAM = 1_000_133
